@@ -1,0 +1,473 @@
+"""Values at given times: state probabilities, absorption, integrals of rewards, survival of a duration.
+
+The method is chosen by size and by the number of expected jumps:
+
+==========================  =====================================================  =====================
+method                      where                                                  bound
+==========================  =====================================================  =====================
+`ladder`                    up to `LADDER_ALWAYS` states; more if time allows      1e-15, any time
+`uniformisation`            any size, few expected jumps (about 1e5)               1e-9 and better
+`squaring`                  up to 1,000 states                                     none: an estimate
+==========================  =====================================================  =====================
+
+Anything else raises NotReached.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Literal
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from markov.chain import ladder, squaring, uniformisation
+from markov.chain.bounds import Enclosure, Flags, Floats, Vector, distribution, relative_to_computed
+from markov.chain.doubled import UNIT, Doubled, plain, total, total_error
+from markov.chain.generator import Generator, Restriction, as_flags
+from markov.errors import NotReached, UsageError
+
+Method = Literal["ladder", "uniformisation", "squaring"]
+Time = Fraction | float | int
+
+#: Up to this many states the ladder is taken whatever the time.
+LADDER_ALWAYS = 130
+#: Seconds that the ladder may take where uniformisation cannot bound the answer.
+LADDER_PATIENCE = 25.0
+#: Above this many expected jumps uniformisation is left to larger chains even where it is cheap.
+_ROUNDS = "scaling and squaring in double-double"
+_UNIFORM = "uniformisation"
+_ESTIMATE = "scaling and squaring in floats (estimate)"
+
+
+@dataclass(frozen=True, eq=False)
+class Transient:
+    """Values at m times of a chain of n states.
+
+    Attributes
+    ----------
+    times : tuple of Fraction
+        As asked for, in that order.
+    states : tuple of Vector
+        Per time the probability of being in each state; entries of absorbing states are 0 (see `absorbed`).
+    absorbed : tuple of Vector
+        Per time the probability of having entered each class of absorbing states.
+    integrals : tuple of Vector
+        Per time the integral of each reward from 0 to that time, before absorption.
+    method : str
+        How.
+    """
+
+    times: tuple[Fraction, ...]
+    states: tuple[Vector, ...]
+    absorbed: tuple[Vector, ...]
+    integrals: tuple[Vector, ...]
+    method: str
+
+
+def as_times(times: Sequence[Time]) -> tuple[Fraction, ...]:
+    """Return times as exact fractions."""
+    exact = []
+    for time in times:
+        if isinstance(time, float) and not math.isfinite(time):
+            raise UsageError(f"time {time}: expected a finite number")
+        exact.append(Fraction(time))
+        if exact[-1] < 0:
+            raise UsageError(f"time {float(time)}: expected a time that is not negative")
+    return tuple(exact)
+
+
+def as_start(start: int | Floats | Vector, n: int) -> Vector:
+    """Return a start distribution over n states from a state number, exact floats or an earlier result."""
+    if isinstance(start, Vector):
+        found = start
+    elif isinstance(start, (int, np.integer)):
+        if not 0 <= start < n:
+            raise UsageError(f"start state {start} outside 0 .. {n - 1}")
+        values = np.zeros(n)
+        values[start] = 1.0
+        found = distribution(values, "given")
+    else:
+        found = distribution(np.asarray(start, dtype=np.float64), "given")
+    if len(found) != n:
+        raise UsageError(f"start distribution of {len(found)} entries for {n} states")
+    if not (np.isfinite(found.values).all() and (found.values >= 0.0).all() and found.values.any()):
+        raise UsageError("a start distribution has negative, infinite or only zero entries")
+    return found
+
+
+def as_classes(absorbing: ArrayLike | None, n: int) -> tuple[NDArray[np.int64], int]:
+    """Return the class of each state, -1 for those that do not absorb, with the number of classes."""
+    if absorbing is None:
+        return np.full(n, -1, dtype=np.int64), 0
+    given = np.asarray(absorbing)
+    if given.shape != (n,):
+        raise UsageError(f"absorbing states given by shape {given.shape}; expected one flag or class per state, {n}")
+    if given.dtype == np.bool_:
+        return np.where(given, 0, -1).astype(np.int64), 1
+    label = given.astype(np.int64)
+    return label, int(label.max(initial=-1)) + 1
+
+
+def as_rewards(
+    rewards: Sequence[Floats | Flags | Vector] | None, n: int, reward_error: float
+) -> tuple[Floats, float, list[Flags]]:
+    """Return rewards as one array float64[n, r] with its relative error and where each can be positive."""
+    columns, error, carried = [], reward_error, []
+    for reward in rewards or ():
+        if isinstance(reward, Vector):
+            if reward.absolute_error > 0.0 or reward.relative_error is None:
+                raise UsageError("a reward must be known with a relative error only")
+            # Stated relative to the rounded values; relative to the exact ones it is a little more.
+            error = max(error, reward.relative_error / (1.0 - reward.relative_error))
+            reward = reward.values
+        values = np.asarray(reward, dtype=np.float64)
+        if values.shape != (n,):
+            raise UsageError(f"a reward of shape {values.shape} for {n} states")
+        if not (np.isfinite(values).all() and (values >= 0.0).all()):
+            raise UsageError("a reward is negative or not finite; split it into two")
+        columns.append(values)
+        carried.append(values > 0.0)
+    return (np.stack(columns, axis=1) if columns else np.zeros((n, 0))), error, carried
+
+
+def transient(
+    generator: Generator,
+    start: int | Floats | Vector,
+    times: Sequence[Time],
+    rewards: Sequence[Floats | Flags | Vector] | None = None,
+    *,
+    absorbing: ArrayLike | None = None,
+    reward_error: float = 0.0,
+    method: Method | None = None,
+) -> Transient:
+    """Return state probabilities, absorption probabilities and integrals of rewards at several times.
+
+    Parameters
+    ----------
+    generator : Generator
+        n states.
+    start : int, float64[n] or Vector
+        Start state or distribution; a Vector brings its own error.
+    times : sequence of Fraction, float or int
+        Taken as exact, not negative.
+    rewards : sequence of float64[n], bool[n] or Vector, optional
+        Rates of reward per state, not negative.  Reward is earned before absorption only.
+    absorbing : bool[n] or int[n], optional
+        States in which the chain is stopped: flags make one class, numbers give the class (-1: not stopped).  The
+        states of a class are lumped, which costs nothing and makes large down sets cheap.
+    reward_error : float
+        Relative error of every reward.
+    method : {"ladder", "uniformisation", "squaring"}, optional
+        Take this one, whatever it costs.
+
+    Raises
+    ------
+    UsageError
+        Arguments that do not fit together.
+    NotReached
+        No method reaches a result.
+    """
+    exact_times = as_times(times)
+    first = as_start(start, generator.n)
+    label, count = as_classes(absorbing, generator.n)
+    columns, reward_error, carried = as_rewards(rewards, generator.n, reward_error)
+    begin = first.values > 0.0
+    if first.absolute_error > 0.0:
+        begin = np.ones(generator.n, dtype=bool) if first.possible is None else first.possible
+    stopped = label >= 0
+    reached = generator.reachable(begin, blocked=stopped)
+    members = np.flatnonzero(reached & ~stopped)
+    part = generator.restricted(members, label, count)
+    initial: Floats = np.zeros(count)
+    np.add.at(initial, label[stopped], first.values[stopped])
+    absorbing_start = np.bincount(label[stopped & begin], minlength=count) > 0 if count else np.zeros(0, dtype=bool)
+    classes_reached = absorbing_start | (part.absorption.high > 0.0).any(axis=0)
+    later = [time for time in exact_times if time > 0]
+    run = _Run(part, first.values[members], columns[members], reward_error, later)
+    chosen = method or run.choose()
+    outcome = run.by(chosen) if later and members.size else None
+    whole = first.total if first.total is not None and not classes_reached.any() else None
+    name = {"ladder": _ROUNDS, "uniformisation": _UNIFORM, "squaring": _ESTIMATE}[chosen]
+    earning = np.array([bool((carry & reached & ~stopped).any()) for carry in carried], dtype=bool)
+    states, absorbed, integrals = [], [], []
+    position = 0
+    for time in exact_times:
+        if outcome is None or time == 0:
+            here = np.where(stopped, 0.0, first.values)
+            states.append(Vector(here, first.relative_error, first.absolute_error, name, begin & ~stopped, whole))
+            # Adding up the start weights of one class rounds.
+            rounding = 0.0 if np.count_nonzero(begin & stopped) <= 1 else generator.n * UNIT
+            relative = None if first.relative_error is None else first.relative_error + rounding
+            spread = first.absolute_error * float(np.count_nonzero(begin))
+            absorbed.append(Vector(initial, relative, spread, name, absorbing_start))
+            integrals.append(Vector(np.zeros(columns.shape[1]), 0.0, 0.0, name, np.zeros(columns.shape[1], dtype=bool)))
+            continue
+        result = outcome.at(position)
+        position += 1
+        values = np.zeros(generator.n)
+        values[members] = result.weights
+        possible = np.zeros(generator.n, dtype=bool)
+        possible[members] = True
+        error = _with_start(result.relative, result.absolute, first, begin, 1.0)
+        states.append(Vector(values, *error, name, possible, whole))
+        error = _with_start(result.gained, result.off, first, begin, 1.0)
+        if initial.any():
+            error = (None if error[0] is None else error[0] + generator.n * UNIT, error[1])
+        absorbed.append(Vector(initial + result.absorbed, *error, name, classes_reached))
+        most = float(columns.max()) * float(time) if columns.size else 0.0
+        integrals.append(
+            Vector(
+                result.integrals,
+                *_with_start(result.gained, result.off, first, begin, most * (1.0 + 1e-9)),
+                name,
+                earning,
+            )
+        )
+    return Transient(exact_times, tuple(states), tuple(absorbed), tuple(integrals), name)
+
+
+def _with_start(
+    relative: float | None, absolute: float, first: Vector, begin: Flags, largest: float
+) -> tuple[float | None, float]:
+    """Return errors relative to the computed values, with those of the start weights taken in.
+
+    An absolute error of each start weight moves any probability by at most their number times it, any integral by at
+    most `largest` times that.
+    """
+    if relative is None or first.relative_error is None:
+        return None, absolute
+    own = relative_to_computed(relative + UNIT)
+    both = own + first.relative_error + own * first.relative_error
+    moved = first.absolute_error * float(np.count_nonzero(begin)) * largest
+    return both * (1.0 + 1e-12), (absolute * (1.0 + 2.0 * relative) + moved * (1.0 + own)) * (1.0 + 1e-9)
+
+
+@dataclass(frozen=True, eq=False)
+class _Moment:
+    """What a method found for one time; errors are relative to the exact values, before rounding to floats."""
+
+    weights: Floats
+    absorbed: Floats
+    integrals: Floats
+    relative: float | None
+    absolute: float
+    gained: float | None
+    off: float
+
+
+@dataclass(frozen=True, eq=False)
+class _Outcome:
+    moments: tuple[_Moment, ...]
+
+    def at(self, position: int) -> _Moment:
+        return self.moments[position]
+
+
+@dataclass(frozen=True, eq=False)
+class _Run:
+    """One question, ready for any method."""
+
+    part: Restriction
+    start: Floats
+    rewards: Floats
+    reward_error: float
+    times: list[Fraction]
+
+    @property
+    def classes(self) -> int:
+        return int(self.part.absorption.high.shape[1])
+
+    def loss(self) -> tuple[Doubled | None, float]:
+        """Rate of absorption from each state, all classes together, with its relative error."""
+        if not self.classes:
+            return None, 0.0
+        return total(self.part.absorption, axis=1), self.part.absorption_error + total_error(self.classes)
+
+    def choose(self) -> Method:
+        """Pick the method."""
+        n = self.part.chain.n
+        if n <= LADDER_ALWAYS or not self.times:
+            return "ladder"
+        loss, _ = self.loss()
+        expected = uniformisation.expected_jumps(self.part.chain, loss, max(self.times))
+        step = uniformisation.jumps(self.part.chain, loss)
+        cheap = uniformisation.affordable(step, self.times)
+        seconds = 7e-9 * n**3 * (20.0 + math.log2(expected + 2.0)) if n < 10_000 else math.inf
+        if cheap and (expected * step.roundings * UNIT < 1e-12 or seconds > 1.0):
+            return "uniformisation"
+        if seconds <= LADDER_PATIENCE:
+            return "ladder"
+        if cheap:
+            return "uniformisation"
+        if n + self.classes <= squaring.LARGEST_SQUARING:
+            return "squaring"
+        raise NotReached(
+            f"{n} states over {expected:.3g} expected jumps: too many states for squaring and too many jumps for "
+            "uniformisation; shorten the time, lump the chain or ask for steady-state values"
+        )
+
+    def by(self, method: Method) -> _Outcome:
+        """Carry out one method."""
+        return {"ladder": self._by_ladder, "uniformisation": self._by_uniformisation, "squaring": self._by_squaring}[
+            method
+        ]()
+
+    def _by_ladder(self) -> _Outcome:
+        loss, loss_error = self.loss()
+        high = np.concatenate((self.part.absorption.high, self.rewards), axis=1)
+        low = np.concatenate((self.part.absorption.low, np.zeros_like(self.rewards)), axis=1)
+        error = max(self.part.absorption_error, self.reward_error)
+        prepared = ladder.build(self.part.chain, loss, loss_error, Doubled(high, low), error, self.times)
+        climbed = ladder.climb(prepared, plain(self.start), self.times)
+        weights = climbed.weights.high + climbed.weights.low
+        integrals = climbed.integrals.high + climbed.integrals.low
+        return _Outcome(
+            tuple(
+                _Moment(
+                    weights[number],
+                    integrals[number, : self.classes],
+                    integrals[number, self.classes :],
+                    climbed.relative[number],
+                    climbed.absolute[number],
+                    climbed.integrals_relative[number],
+                    climbed.integrals_absolute[number],
+                )
+                for number in range(len(self.times))
+            )
+        )
+
+    def _by_uniformisation(self) -> _Outcome:
+        loss, _ = self.loss()
+        step = uniformisation.jumps(self.part.chain, loss)
+        absorption = self.part.absorption.high + self.part.absorption.low
+        columns = np.concatenate((absorption, self.rewards), axis=1)
+        error = max(self.part.absorption_error + UNIT, self.reward_error)
+        walked = uniformisation.walk(step, self.start, columns, error, self.times)
+        return _Outcome(
+            tuple(
+                _Moment(
+                    walked.weights[number],
+                    walked.integrals[number, : self.classes],
+                    walked.integrals[number, self.classes :],
+                    walked.relative[number],
+                    walked.absolute[number],
+                    walked.integrals_relative[number],
+                    walked.integrals_absolute[number],
+                )
+                for number in range(len(self.times))
+            )
+        )
+
+    def _by_squaring(self) -> _Outcome:
+        weights, absorbed, integrals = squaring.estimate(
+            self.part.chain, self.part.absorption, self.rewards, self.start, self.times
+        )
+        return _Outcome(
+            tuple(
+                _Moment(weights[number], absorbed[number], integrals[number], None, 0.0, None, 0.0)
+                for number in range(len(self.times))
+            )
+        )
+
+
+def survival(generator: Generator, alive: ArrayLike, duration: Time, *, method: Method | None = None) -> Vector:
+    """Return for each state the probability of not leaving the `alive` states within a duration.
+
+    Parameters
+    ----------
+    generator : Generator
+        n states.
+    alive : bool[n] or numbers
+        States that must not be left; from any other state the probability is 0.
+    duration : Fraction, float or int
+        Exact, not negative.
+
+    Returns
+    -------
+    Vector
+        n probabilities.  Weight them with a distribution for an interval reliability.
+
+    Raises
+    ------
+    NotReached
+        More than `LADDER_ALWAYS` states over too many expected jumps.
+    """
+    (time,) = as_times([duration])
+    inside = as_flags(alive, generator.n)
+    doomed = generator.reversed().reachable(~inside, blocked=None) if not inside.all() else ~inside
+    values = inside.astype(np.float64)
+    if time == 0 or not (doomed & inside).any():
+        return Vector(values, 0.0, 0.0, "by structure", inside)
+    # Only states with a path out matter; from the others survival is certain, and they count as leaks of no harm.
+    mortal = np.flatnonzero(doomed & inside)
+    part = generator.restricted(np.flatnonzero(inside), np.where(inside, -1, 0), 1)
+    final = np.ones(part.chain.n)
+    loss = Doubled(part.absorption.high[:, 0], part.absorption.low[:, 0])
+    expected = uniformisation.expected_jumps(part.chain, loss, time)
+    chosen = method
+    if chosen is None:
+        seconds = 7e-9 * part.chain.n**3 * (20.0 + math.log2(expected + 2.0)) if part.chain.n < 10_000 else math.inf
+        step = uniformisation.jumps(part.chain, loss, backwards=True)
+        small = part.chain.n <= LADDER_ALWAYS or (
+            seconds <= LADDER_PATIENCE and not uniformisation.affordable(step, [time])
+        )
+        chosen = "ladder" if small else "uniformisation"
+    if chosen == "ladder":
+        prepared = ladder.build(
+            part.chain, loss, part.absorption_error, plain(np.zeros((part.chain.n, 0))), 0.0, [time]
+        )
+        found, relative, absolute = ladder.look_back(prepared, plain(final), time)
+        result, name = found.high + found.low, _ROUNDS
+    elif chosen == "uniformisation":
+        step = uniformisation.jumps(part.chain, loss, backwards=True)
+        result, relative, absolute = uniformisation.look_back(step, final, time)
+        name = _UNIFORM
+    else:
+        raise UsageError(f"method {chosen}: survival knows ladder and uniformisation")
+    values[part.members] = result
+    certain = inside.copy()
+    certain[mortal] = False
+    values[certain] = 1.0
+    return Vector(
+        np.minimum(values, 1.0),
+        relative_to_computed(relative + UNIT),
+        absolute * (1.0 + 2.0 * relative) * (1.0 + 1e-9),
+        name,
+        inside,
+    )
+
+
+def flow(generator: Generator, leaving: ArrayLike, entering: ArrayLike) -> Vector:
+    """Return the total rate from each of some states into any of some others.
+
+    Parameters
+    ----------
+    generator : Generator
+        n states.
+    leaving, entering : bool[n] or numbers
+        A state outside `leaving` gets 0; transitions into `entering` are added up.
+
+    Returns
+    -------
+    Vector
+        n rates per unit of time, usable as weights of a distribution (a frequency) and as a reward (a number of
+        passages).
+    """
+    here, there = as_flags(leaving, generator.n), as_flags(entering, generator.n)
+    members = np.flatnonzero(here)
+    label = np.where(there & ~here, 0, -1)
+    if (here & there).any():
+        raise UsageError("states to leave and states to enter overlap")
+    part = generator.restricted(members, label, 1)
+    values = np.zeros(generator.n)
+    values[members] = part.absorption.high[:, 0] + part.absorption.low[:, 0]
+    return Vector(values, relative_to_computed(part.absorption_error + UNIT), 0.0, "sum of rates", values > 0.0)
+
+
+def entries(vector: Vector) -> list[Enclosure]:
+    """Return every entry of a short vector as an enclosure."""
+    return [vector.entry(number) for number in range(len(vector))]

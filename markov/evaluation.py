@@ -1,0 +1,475 @@
+"""The bridge: answers questions about a chain of states by the methods of the mathematician's wing.
+
+This is the only file that sees both wings.  A question whose answer does not exist raises `IllPosed` with the reason.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from markov.chain import (
+    Enclosure,
+    FirstPassage,
+    Generator,
+    Transient,
+    Vector,
+    aggregate,
+    first_passage,
+    flow,
+    stationary,
+    survival,
+    transient,
+)
+from markov.errors import IllPosed
+from markov.questions import Question
+from markov.rates import split_exact
+from markov.states import GeneratedSpace, Pool, StateSpace
+
+Mask = NDArray[np.bool_]
+Values = NDArray[np.float64]
+
+#: Relative error of one rounded operation.
+_UNIT = 2.0**-53
+
+
+@dataclass(frozen=True)
+class _Class:
+    """A closed communicating class that the chain may end in, with its stationary distribution over all states."""
+
+    members: NDArray[np.int32]
+    distribution: Vector
+
+
+class Answers:
+    """Answers questions about one chain and keeps what several questions share.
+
+    Parameters
+    ----------
+    space : StateSpace
+    year_hours : Fraction
+    times : sequence of Fraction
+        Times in hours at which values will be asked for; they are worked out together.
+    """
+
+    def __init__(self, space: StateSpace, year_hours: Fraction, times: Sequence[Fraction] = ()) -> None:
+        self.space = space
+        self.year_hours = year_hours
+        self._times = tuple(sorted(set(times)))
+        self._stopped: dict[str | None, Transient] = {}
+        self._passages_found: dict[str | None, FirstPassage] = {}
+
+    # --- the chain ------------------------------------------------------------------------------------------------
+
+    @cached_property
+    def generator(self) -> Generator:
+        """The rates of the chain, parallel transitions added."""
+        moving = self.space.arrows.moving
+        high, low = self._arrow_rates
+        arrows = self.space.arrows
+        return aggregate(
+            self.space.size, arrows.source[moving], arrows.target[moving], high[moving], low[moving]
+        )
+
+    @cached_property
+    def _arrow_rates(self) -> tuple[Values, Values]:
+        """Rate of every transition, multiples included, as sums of two floats, shape (a,) each."""
+        arrows, kinds = self.space.arrows, self.space.kinds
+        rate = np.array([kind.rate for kind in kinds.kinds], np.int64)[arrows.kind] if len(arrows) else arrows.kind
+        widest = int(arrows.multiple.max(initial=0)) + 1
+        pairs, where = np.unique(rate.astype(np.int64) * widest + arrows.multiple, return_inverse=True)
+        exact = [kinds.rates.rates[pair // widest].exact * (pair % widest) for pair in pairs.tolist()]
+        high, low = split_exact(exact)
+        return high[where], low[where]
+
+    @cached_property
+    def start(self) -> int | Vector:
+        """Initial state, or distribution over states where crews draw among equals at time zero."""
+        if len(self.space.start) == 1:
+            return self.space.start[0][0]
+        values = np.zeros(self.space.size)
+        for state, chance in self.space.start:
+            values[state] = float(chance)
+        return Vector(values, 2 * _UNIT, 0.0, "given", values > 0.0, 1.0)
+
+    @cached_property
+    def _start_states(self) -> list[int]:
+        return [state for state, _ in self.space.start]
+
+    @cached_property
+    def reachable(self) -> Mask:
+        """States that can be entered from the start, shape (n,)."""
+        return self.generator.reachable(self._start_states)
+
+    @cached_property
+    def arrow_count(self) -> int:
+        """Number of distinct arrows of the chain."""
+        return len(self.generator.source)
+
+    def up(self, of: str | None) -> Mask:
+        """States in which the system, a group or a unit delivers, shape (n,)."""
+        return self.space.up if of is None else self.space.delivers(of)
+
+    def can_fail(self, of: str | None) -> bool:
+        """Tell whether a down state of a subject can be reached at all."""
+        return bool((self.reachable & ~self.up(of)).any())
+
+    # --- the long run ----------------------------------------------------------------------------------------------
+
+    @cached_property
+    def _classes(self) -> tuple[_Class, ...]:
+        found = []
+        for members in self.generator.closed_classes(self._start_states):
+            found.append(_Class(members, stationary(self.generator, members)))
+        return tuple(found)
+
+    def _long_run(self, weigh: Callable[[Vector], Enclosure]) -> Enclosure:
+        """Return a long-run mean, the same from every class that the chain may end in."""
+        values = [weigh(each.distribution) for each in self._classes]
+        if len(values) == 1:
+            return values[0]
+        exact = {value.value for value in values if value.lower == value.upper}
+        if len(exact) == 1 and all(value.lower == value.upper for value in values):
+            return values[0]
+        up = self.up(None)
+        dead = [not up[each.members].any() for each in self._classes]
+        if any(dead) and not all(dead):
+            raise IllPosed("some histories end down for good and others live on, so there is no one long-run value")
+        raise IllPosed("the chain can end in several ways, so the long-run value depends on chance or on the start")
+
+    def _long_run_share(self, states: Mask) -> Enclosure:
+        return self._long_run(lambda pi: pi.weighted(states))
+
+    def _frequency(self, of: str | None) -> Enclosure:
+        passages = self._failure_flow(of)
+        return self._long_run(lambda pi: pi.weighted(passages))
+
+    def _failure_flow(self, of: str | None) -> Vector:
+        up = self.up(of)
+        return flow(self.generator, up, ~up)
+
+    def _per_year(self, value: Enclosure) -> Enclosure:
+        return value.times(self.year_hours)
+
+    # --- at given times --------------------------------------------------------------------------------------------
+
+    @cached_property
+    def _subjects(self) -> list[str | None]:
+        return [None]
+
+    def expect(self, question: Question) -> None:
+        """Tell in advance what will be asked, so that the integrals of all subjects are worked out together."""
+        if question.measure in _INTEGRALS and question.of not in self._subjects:
+            try:
+                self.up(question.of)
+            except IllPosed:
+                return  # answered with the reason when it is asked
+            self._subjects.append(question.of)
+
+    @cached_property
+    def _free(self) -> Transient:
+        """The chain as it runs, with the down time and the passages of every subject accumulated."""
+        rewards: list[Vector | Mask | Values] = []
+        for of in self._subjects:
+            rewards += [(~self.up(of)).astype(np.float64), self._failure_flow(of), self.up(of).astype(np.float64)]
+        return transient(self.generator, self.start, self._times, rewards)
+
+    def _stopped_at_failure(self, of: str | None) -> Transient:
+        """The chain stopped at the first failure of a subject."""
+        if of not in self._stopped:
+            self._stopped[of] = transient(self.generator, self.start, self._times, absorbing=~self.up(of))
+        return self._stopped[of]
+
+    def _states_at(self, at: Fraction) -> Vector:
+        return self._free.states[self._times.index(at)]
+
+    def _integral(self, at: Fraction, of: str | None, which: int) -> Enclosure:
+        if of not in self._subjects:
+            self.up(of)  # raises where the subject has no down state
+            raise AssertionError(f"integrals of {of} were not expected")
+        integrals = self._free.integrals[self._times.index(at)]
+        return integrals.entry(3 * self._subjects.index(of) + which)
+
+    def _failed_by(self, at: Fraction, of: str | None) -> Enclosure:
+        return self._stopped_at_failure(of).absorbed[self._times.index(at)].entry(0).capped()
+
+    def _alive_at(self, at: Fraction, of: str | None) -> Vector:
+        return self._stopped_at_failure(of).states[self._times.index(at)]
+
+    # --- the measures ----------------------------------------------------------------------------------------------
+
+    def answer(self, question: Question) -> Enclosure:
+        """Answer one question.
+
+        Raises
+        ------
+        IllPosed
+            The question has no answer in this chain.
+        NotReached
+            No method reached its tolerance.
+        """
+        return _MEASURES[question.measure](self, question)
+
+    def _reliability(self, question: Question) -> Enclosure:
+        at = _time(question)
+        alive = self._alive_at(at, question.of).weighted(np.ones(self.space.size)).capped()
+        return alive.meet(self._failed_by(at, question.of).complement()) if alive.lower is not None else alive
+
+    def _unreliability(self, question: Question) -> Enclosure:
+        return self._failed_by(_time(question), question.of)
+
+    def _interval_reliability(self, question: Question) -> Enclosure:
+        if question.for_hours is None:
+            raise AssertionError("an interval reliability has an interval")
+        lasting = survival(self.generator, self.up(question.of), question.for_hours)
+        if question.at_hours is None:
+            return self._long_run(lambda pi: pi.weighted(lasting)).capped()
+        return self._states_at(question.at_hours).weighted(lasting).capped()
+
+    def _share_of_states(self, states: Mask, at: Fraction | None) -> Enclosure:
+        return self._long_run_share(states) if at is None else self._states_at(at).weighted(states)
+
+    def _availability(self, question: Question) -> Enclosure:
+        return self._share_of_states(self.up(question.of), question.at_hours)
+
+    def _unavailability(self, question: Question) -> Enclosure:
+        return self._share_of_states(~self.up(question.of), question.at_hours)
+
+    def _mean_unavailability(self, question: Question) -> Enclosure:
+        at = _positive_time(question)
+        return self._integral(at, question.of, 0).over(at).capped()
+
+    def _mean_availability(self, question: Question) -> Enclosure:
+        at = _positive_time(question)
+        up = self._integral(at, question.of, 2).over(at).capped()
+        return up.meet(self._mean_unavailability(question).complement()) if up.lower is not None else up
+
+    def _mean_time_to_first_failure(self, question: Question) -> Enclosure:
+        mean = self._first_passage(question.of).mean
+        if mean is None:
+            raise IllPosed("a failure may never come, so there is no mean time to it")
+        return mean
+
+    def _spread_of_time_to_first_failure(self, question: Question) -> Enclosure:
+        spread = self._first_passage(question.of).standard_deviation
+        if spread is None:
+            raise IllPosed("a failure may never come, so there is no spread of the time to it")
+        return spread
+
+    def _first_passage(self, of: str | None) -> FirstPassage:
+        if not self.can_fail(of):
+            raise IllPosed("no down state can be reached")
+        if of not in self._passages_found:
+            self._passages_found[of] = first_passage(self.generator, self.start, ~self.up(of))
+        return self._passages_found[of]
+
+    def _mean_up_time(self, question: Question) -> Enclosure:
+        return self._availability(question) / self._passages(question)
+
+    def _mean_down_time(self, question: Question) -> Enclosure:
+        return self._unavailability(question) / self._passages(question)
+
+    def _passages(self, question: Question) -> Enclosure:
+        """Return the failure frequency as a divisor."""
+        if not self.can_fail(question.of):
+            raise IllPosed("no down state can be reached")
+        frequency = self._failure_frequency(question)
+        if frequency.upper == 0:
+            raise IllPosed("in the long run there are no failures to count: the chain ends up or down for good")
+        return frequency
+
+    def _failure_frequency(self, question: Question) -> Enclosure:
+        if question.at_hours is None:
+            return self._frequency(question.of)
+        return self._states_at(question.at_hours).weighted(self._failure_flow(question.of))
+
+    def _expected_failures(self, question: Question) -> Enclosure:
+        return self._integral(_time(question), question.of, 1)
+
+    def _failures_per_year(self, question: Question) -> Enclosure:
+        return self._per_year(self._frequency(question.of))
+
+    def _downtime_per_year(self, question: Question) -> Enclosure:
+        return self._per_year(self._long_run_share(~self.up(question.of)))
+
+    def _conditional_failure_intensity(self, question: Question) -> Enclosure:
+        up = self._availability(question)
+        if up.upper == 0:
+            raise IllPosed("the system is down for good" if question.of is None else f"{question.of} is down for good")
+        return self._failure_frequency(question) / up
+
+    def _hazard_rate(self, question: Question) -> Enclosure:
+        alive = self._alive_at(_time(question), question.of)
+        survivors = self._reliability(question)
+        if survivors.upper == 0:
+            raise IllPosed("nothing survives to this time, so there is no hazard")
+        return alive.weighted(self._failure_flow(question.of)) / survivors
+
+    def _mean_failure_rate(self, question: Question) -> Enclosure:
+        at = _positive_time(question)
+        return self._failed_by(at, question.of).over(at)
+
+    def _state_probability(self, question: Question) -> Enclosure:
+        if question.state is None:
+            raise AssertionError("a state probability names its state")
+        states = np.zeros(self.space.size, np.bool_)
+        states[self.space.find(question.state)] = True
+        return self._share_of_states(states, question.at_hours)
+
+    def _mean_of(self, values: Values, at: Fraction | None) -> Enclosure:
+        if at is None:
+            return self._long_run(lambda pi: pi.weighted(values, _UNIT))
+        return self._states_at(at).weighted(values, _UNIT)
+
+    def _mean_units_failed(self, question: Question) -> Enclosure:
+        return self._mean_of(self.space.failed(question.of), question.at_hours)
+
+    def _mean_capacity(self, question: Question) -> Enclosure:
+        share = self.space.capacity(question.of)
+        if np.isin(share, (0.0, 1.0)).all():
+            return self._share_of_states(share == 1.0, question.at_hours)
+        # A share is formed by a few roundings: divisions by `required` and sums over the members.
+        weights = (16 * _UNIT,)
+        if question.at_hours is None:
+            return self._long_run(lambda pi: pi.weighted(share, *weights)).capped()
+        return self._states_at(question.at_hours).weighted(share, *weights).capped()
+
+    # --- what redundancy costs -------------------------------------------------------------------------------------
+
+    @property
+    def _plant(self) -> GeneratedSpace:
+        if not isinstance(self.space, GeneratedSpace):
+            raise IllPosed("a hand-written chain does not tell units, crews or starts apart")
+        return self.space
+
+    def _count_rate(self, per_kind: Values) -> Enclosure:
+        """Return the long-run number per hour of something that each arrow counts so many times."""
+        counts = per_kind[self.space.arrows.kind]
+        counting = counts > 0
+        rates = self._arrow_rates[0][counting] * counts[counting]
+        return self._flow_rate(self.space.arrows.source[counting], rates)
+
+    def _flow_rate(self, source: NDArray[np.int32], rates: Values) -> Enclosure:
+        weights = np.bincount(source, weights=rates, minlength=self.space.size)
+        terms = int(np.bincount(source, minlength=1).max()) if len(source) else 0
+        return self._long_run(lambda pi: pi.weighted(weights, (terms + 3) * _UNIT))
+
+    def _repairs_per_year(self, question: Question) -> Enclosure:
+        slots = self._slots(question.of)
+        kinds = self.space.kinds.kinds
+        counts = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])
+        return self._per_year(self._count_rate(counts))
+
+    def _slots(self, of: str | None) -> frozenset[tuple[str, str]]:
+        """Return (island, slot) of everything that a subject covers: the system, a group, a unit or a crew pool."""
+        plant = self._plant
+        for pool in plant.pools(of) if of is not None else ():
+            return frozenset().union(*(plant.slots_of(kind.unit) for kind in pool.kinds))
+        return plant.slots_of(of)
+
+    def _starts_per_year(self, question: Question) -> Enclosure:
+        slots = self._slots(question.of)
+        counts = np.array(
+            [float(sum((kind.island, start) in slots for start in kind.starts)) for kind in self.space.kinds.kinds]
+        )
+        return self._per_year(self._count_rate(counts))
+
+    def _crew_utilisation(self, question: Question) -> Enclosure:
+        pools = self._pools(question.of)
+        busy = np.sum([self._plant.crews_at_work(pool) for pool in pools], axis=0)
+        return self._mean_of(busy, None).over(sum(pool.size for pool in pools)).capped()
+
+    def _waiting_for_crew(self, question: Question) -> Enclosure:
+        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in self._pools(question.of)]
+        return self._mean_of(np.sum(waiting, axis=0), None)
+
+    def _probability_of_waiting(self, question: Question) -> Enclosure:
+        arrows, kinds = self.space.arrows, self.space.kinds.kinds
+        rates = self._arrow_rates[0]
+        calls = np.zeros(len(arrows))
+        refused = np.zeros(len(arrows))
+        for pool in self._pools(question.of):
+            slots = self._slots(pool.name)
+            calling = self._plant.calling(pool)
+            ended = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])[arrows.kind]
+            before = calling[arrows.source] - ended
+            new = np.maximum(calling[arrows.target] - before, 0)
+            free = np.maximum(pool.size - before, 0)
+            calls += new
+            refused += np.maximum(new - free, 0)
+        counting = calls > 0
+        if not counting.any():
+            raise IllPosed("no fault ever calls for a crew")
+        every = self._flow_rate(arrows.source[counting], (rates * calls)[counting])
+        if every.upper == 0:
+            raise IllPosed("in the long run no fault calls for a crew")
+        counting = refused > 0
+        return (self._flow_rate(arrows.source[counting], (rates * refused)[counting]) / every).capped()
+
+    def _pools(self, of: str | None) -> tuple[Pool, ...]:
+        pools = self._plant.pools(of)
+        if not pools:
+            raise IllPosed("the chain has no crew pool" if of is None else f"crew pool {of} serves nothing in the chain")
+        return pools
+
+    def _time_without_redundancy(self, question: Question) -> Enclosure:
+        return self._per_year(self._long_run_share(self._plant.without_redundancy(question.of)))
+
+
+#: Measures that are integrals over time, worked out together for all subjects.
+_INTEGRALS = frozenset({"mean_availability", "mean_unavailability", "expected_failures"})
+
+
+def _time(question: Question) -> Fraction:
+    if question.at_hours is None:
+        raise IllPosed("needs a time: give `at`, or a mission time")
+    return question.at_hours
+
+
+def _positive_time(question: Question) -> Fraction:
+    at = _time(question)
+    if at == 0:
+        raise IllPosed("an average over no time: the time is zero")
+    return at
+
+
+_MEASURES: dict[str, Callable[[Answers, Question], Enclosure]] = {
+    "reliability": Answers._reliability,
+    "unreliability": Answers._unreliability,
+    "interval_reliability": Answers._interval_reliability,
+    "availability": Answers._availability,
+    "unavailability": Answers._unavailability,
+    "mean_availability": Answers._mean_availability,
+    "mean_unavailability": Answers._mean_unavailability,
+    "steady_state_availability": Answers._availability,
+    "steady_state_unavailability": Answers._unavailability,
+    "mean_time_to_first_failure": Answers._mean_time_to_first_failure,
+    "standard_deviation_of_time_to_first_failure": Answers._spread_of_time_to_first_failure,
+    "mean_up_time": Answers._mean_up_time,
+    "mean_down_time": Answers._mean_down_time,
+    "failure_frequency": Answers._failure_frequency,
+    "expected_failures": Answers._expected_failures,
+    "failures_per_year": Answers._failures_per_year,
+    "downtime_per_year": Answers._downtime_per_year,
+    "conditional_failure_intensity": Answers._conditional_failure_intensity,
+    "hazard_rate": Answers._hazard_rate,
+    "mean_failure_rate": Answers._mean_failure_rate,
+    # Without tests nothing repeats: the mean and the peak over a cycle of any length are the long-run values.
+    "pfd_average": Answers._unavailability,
+    "pfd_peak": Answers._unavailability,
+    "pfh": Answers._failure_frequency,
+    "repairs_per_year": Answers._repairs_per_year,
+    "starts_per_year": Answers._starts_per_year,
+    "crew_utilisation": Answers._crew_utilisation,
+    "waiting_for_crew": Answers._waiting_for_crew,
+    "probability_of_waiting": Answers._probability_of_waiting,
+    "mean_units_failed": Answers._mean_units_failed,
+    "mean_capacity": Answers._mean_capacity,
+    "time_without_redundancy": Answers._time_without_redundancy,
+    "state_probability": Answers._state_probability,
+}

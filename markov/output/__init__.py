@@ -1,0 +1,1 @@
+"""Files that people read: diagrams, tables, documents; each writer stands by itself."""

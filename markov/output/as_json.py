@@ -1,0 +1,74 @@
+"""A solution as one JSON object."""
+
+from __future__ import annotations
+
+import json
+from fractions import Fraction
+from typing import Any
+
+from markov.results import Result, Solution, TargetResult
+
+
+def solution_json(solution: Solution) -> str:
+    """Return the solution as JSON text, one object, ending in a newline."""
+    return json.dumps(solution_object(solution), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def solution_object(solution: Solution) -> dict[str, Any]:
+    """Return the solution as plain dictionaries, lists, numbers and texts."""
+    return {
+        "title": solution.title,
+        "spec_sha256": solution.sha256,
+        "version": solution.version,
+        "states": solution.states,
+        "transitions": solution.transitions,
+        "year_hours": _number(solution.year_hours),
+        "results": [_result(result) for result in solution.results],
+        "targets": [_target(target) for target in solution.targets],
+        "assumptions": list(solution.assumptions),
+        "warnings": list(solution.warnings),
+    }
+
+
+def _result(result: Result) -> dict[str, Any]:
+    entry: dict[str, Any] = {
+        "measure": result.measure,
+        "of": result.of,
+        "state": result.state,
+        "at_hours": _number(result.at_hours),
+        "value": result.value,
+        "lower": result.lower,
+        "upper": result.upper,
+        "unit": result.unit,
+        "method": result.method,
+    }
+    if result.for_hours is not None:
+        entry["for_hours"] = _number(result.for_hours)
+    if result.reason is not None:
+        entry["reason"] = result.reason
+    return entry
+
+
+def _target(target: TargetResult) -> dict[str, Any]:
+    entry: dict[str, Any] = {
+        "id": target.id,
+        "measure": target.measure,
+        "of": target.of,
+        "at_hours": _number(target.at_hours),
+        "limit": _number(target.limit),
+        "direction": target.direction,
+        "value": target.result.value,
+        "lower": target.result.lower,
+        "upper": target.result.upper,
+        "verdict": target.verdict,
+        "why": target.why,
+    }
+    if target.result.reason is not None:
+        entry["reason"] = target.result.reason
+    return entry
+
+
+def _number(value: Fraction | None) -> int | float | None:
+    if value is None:
+        return None
+    return int(value) if value.denominator == 1 and abs(value) < 2**53 else float(value)

@@ -1,0 +1,153 @@
+"""Folding of a diagram that is too large to read into one box per level, condition or special state."""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Iterable
+
+from markov.errors import UsageError
+from markov.output.diagram import ArrowKind, DiagramArrow, DiagramNode, StateDiagram
+
+_ALTERNATIVES_SHOWN = 2
+"""Different sums of rates spelt out on one arrow between boxes; more are counted."""
+_NUMBERS_SHOWN = 60
+"""Characters of state numbers listed in a box; a longer list gives its first and last number."""
+
+
+def fold_by_level(diagram: StateDiagram, *, band: int = 1) -> StateDiagram:
+    """Fold the states into boxes, one per band of levels and condition, with summed rates between the boxes.
+
+    Final states never share a box with others, nor do initial ones. A box says how many states it holds, which ones,
+    and how many arrows run inside it; a remark printed in the picture says that the diagram is folded.
+
+    Parameters
+    ----------
+    diagram
+        The diagram to fold; one that is folded already is refused.
+    band
+        Number of neighbouring levels that share a column, 1 or more.
+
+    Returns
+    -------
+    StateDiagram
+        The folded diagram. A box bears the lowest number of the states that it holds.
+
+    Raises
+    ------
+    UsageError
+        A band below 1, or a diagram that is folded already.
+
+    Notes
+    -----
+    Method: for every state of a box the formulas of its arrows into another box are summed. Where all states of the
+    box have the same sum, that sum stands on the arrow, and is the rate between the boxes whatever the shares of
+    the states (ordinary lumpability: J. Kemeny, J. L. Snell, Finite Markov Chains, 1960, section 6.3; cited from
+    memory). Where they differ, the arrow says that the rate differs by state. Formulas are compared as text.
+    """
+    if band < 1:
+        raise UsageError(f"a band of {band} levels; expected 1 or more")
+    if any(node.holds for node in diagram.nodes):
+        raise UsageError("the diagram is folded already; expected one whose boxes are single states")
+    boxes: dict[tuple[int, int, bool, bool], list[DiagramNode]] = {}
+    order = ("up", "degraded", "down")
+    for node in diagram.nodes:
+        key = (node.level // band, order.index(node.condition), node.final, not node.initial)
+        boxes.setdefault(key, []).append(node)
+    members = {
+        held[0].number: held for held in (sorted(boxes[key], key=lambda node: node.number) for key in sorted(boxes))
+    }
+    box_of = {node.number: box for box, held in members.items() for node in held}
+    spans: dict[int, tuple[int, int]] = {}
+    for node in diagram.nodes:
+        low, high = spans.get(node.level // band, (node.level, node.level))
+        spans[node.level // band] = (min(low, node.level), max(high, node.level))
+
+    inside: Counter[int] = Counter()
+    between: dict[tuple[int, int, ArrowKind], list[DiagramArrow]] = {}
+    for arrow in diagram.arrows:
+        source, target = box_of[arrow.source], box_of[arrow.target]
+        if source == target:
+            inside[source] += 1
+        else:
+            between.setdefault((source, target, arrow.kind), []).append(arrow)
+
+    return StateDiagram(
+        title=diagram.title,
+        subtitle=diagram.subtitle,
+        nodes=tuple(_folded_box(held, spans[held[0].level // band], inside[box]) for box, held in members.items()),
+        arrows=tuple(
+            DiagramArrow(source, target, _rate_between(members[source], arrows), kind)
+            for (source, target, kind), arrows in sorted(between.items())
+        ),
+        legend=diagram.legend,
+        alt_text=diagram.alt_text,
+        remarks=(*diagram.remarks, _remark(diagram, len(members), band, sum(inside.values()), len(between))),
+    )
+
+
+def _folded_box(held: list[DiagramNode], span: tuple[int, int], arrows_inside: int) -> DiagramNode:
+    low, high = span
+    first = held[0]
+    if len(held) == 1:
+        lines = first.lines
+    else:
+        numbers = ranges(node.number for node in held)
+        if len(numbers) > _NUMBERS_SHOWN:
+            numbers = f"{first.number} to {held[-1].number}, in part"
+        lines = (f"states {numbers}", f"{_count(arrows_inside, 'arrow')} inside")
+    return DiagramNode(
+        number=first.number,
+        lines=lines,
+        condition=first.condition,
+        initial=first.initial,
+        final=first.final,
+        level=low,
+        holds=tuple(node.number for node in held) if len(held) > 1 else (),
+        top_level=high if high > low else None,
+    )
+
+
+def _rate_between(held: list[DiagramNode], arrows: list[DiagramArrow]) -> str:
+    formulas: dict[int, list[str]] = {node.number: [] for node in held}
+    for arrow in arrows:
+        formulas[arrow.source].append(arrow.label)
+    sums = Counter(_summed(labels) for labels in formulas.values())
+    if len(sums) == 1:
+        return next(iter(sums))
+    if len(sums) <= _ALTERNATIVES_SHOWN:
+        spelt = " or ".join(text for text, _ in sorted(sums.items(), key=lambda item: (-item[1], item[0])))
+        return f"by state: {spelt}"
+    return f"{len(arrows)} arrows, {len(sums)} sums"
+
+
+def _summed(labels: list[str]) -> str:
+    """Return the sum of the formulas, equal ones gathered; 0 for none."""
+    if not labels:
+        return "0"
+    return " + ".join(text if times == 1 else f"{times}·({text})" for text, times in sorted(Counter(labels).items()))
+
+
+def _remark(diagram: StateDiagram, boxes: int, band: int, inside: int, between: int) -> str:
+    columns = "number of failed units" if band == 1 else f"band of {band} numbers of failed units"
+    return (
+        f"Folded: {_count(len(diagram.nodes), 'state')} and {_count(len(diagram.arrows), 'arrow')} in "
+        f"{boxes} boxes, one per {columns} and condition. {_count(inside, 'arrow')} inside boxes are not drawn; "
+        f"the other {len(diagram.arrows) - inside} are gathered into {between}. “By state”, and “60 arrows, 15 sums”: "
+        "the rate differs between the states inside the box, in so many sums of formulas. "
+        "The transition table lists every arrow."
+    )
+
+
+def _count(number: int, word: str) -> str:
+    return f"{number} {word}" if number == 1 else f"{number} {word}s"
+
+
+def ranges(numbers: Iterable[int]) -> str:
+    """Return numbers as text with runs drawn together: ``1–4, 7``."""
+    runs: list[list[int]] = []
+    for number in sorted(numbers):
+        if runs and number == runs[-1][1] + 1:
+            runs[-1][1] = number
+        else:
+            runs.append([number, number])
+    return ", ".join(str(low) if low == high else f"{low}–{high}" for low, high in runs)

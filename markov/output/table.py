@@ -1,0 +1,146 @@
+"""A solution as tables for a person at a terminal."""
+
+from __future__ import annotations
+
+import io
+
+from rich.console import Console
+from rich.padding import Padding
+from rich.table import Table
+from rich.text import Text
+
+from markov.output.wording import (
+    CAUTIONS,
+    bound_words,
+    measure_words,
+    timing_words,
+    unit_words,
+    value_words,
+)
+from markov.results import Result, Solution, TargetResult
+
+#: System measures that the table always holds; the JSON holds every measure.
+_ALWAYS = {
+    "steady_state_availability",
+    "steady_state_unavailability",
+    "failures_per_year",
+    "downtime_per_year",
+    "mean_time_to_first_failure",
+    "mean_up_time",
+    "mean_down_time",
+    "unreliability",
+    "reliability",
+    "mean_unavailability",
+    "expected_failures",
+    "repairs_per_year",
+    "starts_per_year",
+    "crew_utilisation",
+    "time_without_redundancy",
+    "gain_over_single_unit",
+    "gain_over_independent_blocks",
+}
+
+_VERDICT_STYLE = {"met": "bold green", "cannot_occur": "bold green", "missed": "bold red", "undecided": "bold yellow"}
+
+
+def print_solution(solution: Solution, console: Console) -> None:
+    """Print a solution on a console."""
+    console.print(Text(solution.title or solution.source_name, style="bold"))
+    console.print(
+        f"{solution.states:,} states, {solution.transitions:,} transitions; a year is "
+        f"{float(solution.year_hours):g} h; spec {solution.sha256[:12]}; markov {solution.version}",
+        style="dim",
+    )
+    if solution.targets:
+        _heading(console, "Targets")
+        console.print(_target_table(solution.targets))
+    _heading(console, "Results")
+    console.print(_result_table(tuple(result for result in solution.results if _matters(result))))
+    console.print(
+        Padding(
+            "The last column is the proven bound relative to the value: the exact answer of the model lies within it.",
+            (0, 0, 0, 2),
+        ),
+        style="dim",
+    )
+    _list(console, "Choices left unsaid", solution.assumptions)
+    _list(console, "Warnings", solution.warnings)
+    _list(console, "Cautions", CAUTIONS)
+
+
+def solution_text(solution: Solution, width: int = 110) -> str:
+    """Return the tables as plain text of a fixed width."""
+    stream = io.StringIO()
+    print_solution(solution, Console(file=stream, width=width, color_system=None, highlight=False))
+    return "\n".join(line.rstrip() for line in stream.getvalue().splitlines()) + "\n"
+
+
+def _matters(result: Result) -> bool:
+    return result.measure in _ALWAYS or result.of is not None or result.state is not None
+
+
+def _heading(console: Console, text: str) -> None:
+    console.print()
+    console.print(Text(text, style="bold"))
+
+
+def _target_table(targets: tuple[TargetResult, ...]) -> Table:
+    table = _plain_table("", "target", "measure", "limit", "value", "verdict", "why")
+    for target in targets:
+        table.add_row(
+            "",
+            Text(target.id),
+            Text(_measure_cell(target.measure, target.of, timing_words(target.result))),
+            Text(f"{target.direction.replace('_', ' ')} {target.limit_text}"),
+            Text(_value_cell(target.result)),
+            Text(target.verdict.replace("_", " "), style=_VERDICT_STYLE[target.verdict]),
+            Text(target.why),
+        )
+    return table
+
+
+def _result_table(results: tuple[Result, ...]) -> Table:
+    table = _plain_table("", "measure", "value", "bound")
+    table.columns[2].justify = "right"
+    for result in results:
+        table.add_row(
+            "",
+            Text(_measure_cell(result.measure, result.of, timing_words(result), result.state)),
+            Text(_value_cell(result) if result.reason is None else "—"),
+            Text(bound_words(result) if result.reason is None else result.reason),
+        )
+    return table
+
+
+def _plain_table(*headings: str) -> Table:
+    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="dim")
+    for heading in headings:
+        table.add_column(heading, overflow="fold")
+    return table
+
+
+def _measure_cell(measure: str, of: str | None, timing: str, state: str | None = None) -> str:
+    words = measure_words(measure)
+    if of is not None:
+        words += f" of {of}"
+    if state is not None:
+        words += f" of [{state}]"
+    return f"{words}, {timing}" if timing and timing != "long run" else words
+
+
+def _value_cell(result: Result) -> str:
+    unit = unit_words(result.unit)
+    value = value_words(result.measure, result.value)
+    return f"{value} {unit}".rstrip() if not unit.startswith("/") else f"{value}{unit}"
+
+
+def _list(console: Console, heading: str, entries: tuple[str, ...]) -> None:
+    if not entries:
+        return
+    _heading(console, heading)
+    table = Table.grid(padding=(0, 1, 0, 0))
+    table.add_column(justify="right", style="dim")
+    table.add_column(overflow="fold")
+    for number, entry in enumerate(entries, 1):
+        table.add_row(f"  {number}", Text(entry))
+    console.print(table)

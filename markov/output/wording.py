@@ -1,0 +1,88 @@
+"""Words and digits shared by everything that prints a solution."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+
+from markov.measures import MEASURES
+from markov.results import Result
+
+#: Printed with every verdict.  What they say is common practice of the trade.
+CAUTIONS = (
+    "The numbers hold for the model and the data of the spec.  Systematic faults, software, human error, ageing and "
+    "data used outside their range are not in them.",
+    "A met target is not an approval: where people can be hurt, local codes and licensed practice decide, "
+    "not this program.",
+)
+
+#: Measures whose digits lie in their distance from one.
+_NEAR_ONE = {
+    "reliability",
+    "interval_reliability",
+    "availability",
+    "mean_availability",
+    "steady_state_availability",
+    "mean_capacity",
+}
+
+_UNITS = {"1": "", "h": "h", "1/h": "/h", "1/y": "/y", "h/y": "h/y"}
+
+
+def measure_words(measure: str) -> str:
+    """Return a measure's name as words: ``steady-state availability``."""
+    words = measure.replace("_", " ").replace("steady state", "steady-state")
+    return words.replace("pfd", "PFD").replace("pfh", "PFH")
+
+
+def unit_words(unit: str) -> str:
+    """Return the unit of measure as printed; nothing for a plain number."""
+    return _UNITS[unit]
+
+
+def hours_words(hours: Fraction | None) -> str:
+    """Return a time in hours with its unit; an em dash where there is none."""
+    if hours is None:
+        return "—"
+    return f"{int(hours):,} h".replace(",", " ") if hours.denominator == 1 else f"{float(hours):.6g} h"
+
+
+def value_words(measure: str, value: float | None, digits: int = 6) -> str:
+    """Return a value with the digits that tell: of the distance from one where the value is meant to be near one."""
+    if value is None:
+        return "—"
+    if measure in _NEAR_ONE and 0.9 < value < 1:
+        distance = 1 - value
+        places = min(digits - 1 - _exponent(distance), 15)
+        return f"{value:.{places}f}"
+    if value != 0 and not 1e-3 <= abs(value) < 10 ** (digits + 3):
+        return f"{value:.{digits - 1}e}"
+    if value == int(value) and abs(value) < 10 ** (digits + 3):
+        return f"{int(value)}"
+    return f"{value:.{digits}g}" if abs(value) < 10**digits else f"{value:.1f}"
+
+
+def _exponent(value: float) -> int:
+    return int(f"{value:.0e}".split("e")[1])
+
+
+def bound_words(result: Result) -> str:
+    """Return how far the value is proven: the half width of its bound over the value."""
+    if result.value is None:
+        return ""
+    if result.lower is None or result.upper is None:
+        return "estimate, no bound"
+    if result.lower == result.upper:
+        return "exact"
+    width = result.relative_width
+    return f"± {result.upper - result.lower:.0e}" if width is None else f"± {width / 2:.0e}"
+
+
+def timing_words(result: Result) -> str:
+    """Return the time a result belongs to: hours, the long run, or nothing."""
+    if result.at_hours is not None:
+        told = f"at {hours_words(result.at_hours)}"
+    else:
+        told = "" if MEASURES[result.measure].timing == "none" else "long run"
+    if result.for_hours is not None:
+        told += f" for {hours_words(result.for_hours)}"
+    return told

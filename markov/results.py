@@ -1,0 +1,132 @@
+"""What a solved model says: results with bounds, verdicts on targets, choices left unsaid."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Literal
+
+Verdict = Literal["met", "missed", "undecided", "cannot_occur"]
+
+
+@dataclass(frozen=True)
+class Result:
+    """One number with the bound that was proven for it, or the reason why there is none.
+
+    Attributes
+    ----------
+    measure : str
+    of : str or None
+        Group, unit or crew pool; None is the system.
+    state : str or None
+        State that was asked for by name.
+    at_hours, for_hours : Fraction or None
+        Time asked for, and length of the interval after it.
+    value : float or None
+        None where the question has no answer; `reason` then says why.
+    lower, upper : float or None
+        The exact answer of the model lies between them, rounding included.  Both are None for an estimate.
+    unit : str
+        Unit of measure: ``1``, ``h``, ``1/h``, ``1/y`` or ``h/y``.
+    method : str
+        How the number was obtained.
+    reason : str or None
+    """
+
+    measure: str
+    of: str | None
+    state: str | None
+    at_hours: Fraction | None
+    for_hours: Fraction | None
+    value: float | None
+    lower: float | None
+    upper: float | None
+    unit: str
+    method: str
+    reason: str | None = None
+
+    @property
+    def is_proven(self) -> bool:
+        """Whether the value has a proven bound."""
+        return self.lower is not None and self.upper is not None
+
+    @property
+    def relative_width(self) -> float | None:
+        """Width of the bound over the value; None without a bound or a value other than zero."""
+        if self.lower is None or self.upper is None or not self.value:
+            return None
+        return (self.upper - self.lower) / abs(self.value)
+
+
+@dataclass(frozen=True)
+class TargetResult:
+    """The verdict on one target, from unrounded values.
+
+    `limit` is the limit in the unit of the measure; `satisfied` tells whether the target counts as met.
+    """
+
+    id: str
+    measure: str
+    of: str | None
+    at_hours: Fraction | None
+    limit: Fraction
+    limit_text: str
+    direction: Literal["at_least", "at_most"]
+    result: Result
+    verdict: Verdict
+    satisfied: bool | None
+    why: str
+
+
+@dataclass(frozen=True)
+class Solution:
+    """A solved model: everything that `markov solve` prints.
+
+    Attributes
+    ----------
+    title, source_name, sha256, version : str
+        Of the spec and of the program that solved it.
+    states, transitions : int
+        Size of the chain that was solved: states, distinct arrows.
+    year_hours : Fraction
+        Hours in a year, as every per-year figure uses them.
+    results : tuple of Result
+    targets : tuple of TargetResult
+    assumptions : tuple of str
+        Choices that the spec leaves unsaid and that are able to change a result.
+    warnings : tuple of str
+    """
+
+    title: str
+    source_name: str
+    sha256: str
+    version: str
+    states: int
+    transitions: int
+    year_hours: Fraction
+    results: tuple[Result, ...]
+    targets: tuple[TargetResult, ...]
+    assumptions: tuple[str, ...]
+    warnings: tuple[str, ...]
+
+    @property
+    def exit_status(self) -> int:
+        """Return 0 if all targets are met, 1 if one is missed, 3 if one is undecided and none missed."""
+        if any(target.satisfied is False for target in self.targets):
+            return 1
+        if any(target.satisfied is None for target in self.targets):
+            return 3
+        return 0
+
+    def result(self, measure: str, *, of: str | None = None, at_hours: Fraction | float | None = None) -> Result:
+        """Return the result of one measure.
+
+        Raises
+        ------
+        KeyError
+            The solution holds no such result.
+        """
+        for result in self.results:
+            if result.measure == measure and result.of == of and (at_hours is None or result.at_hours == at_hours):
+                return result
+        raise KeyError(f"no result {measure!r} of {of or 'the system'} in this solution")

@@ -1,0 +1,163 @@
+"""From a model to a solution: generate, answer every question, judge every target."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+
+from markov._version import __version__
+from markov.chain import Enclosure
+from markov.errors import IllPosed, NotReached
+from markov.evaluation import Answers
+from markov.gains import gain
+from markov.model import Model
+from markov.questions import Question, all_questions, question_of
+from markov.results import Result, Solution
+from markov.states import GeneratedSpace, StateSpace, generate, take
+from markov.states.generation import STATE_LIMIT
+from markov.unsaid import unsaid_choices
+from markov.verdicts import judge
+
+#: Called with what is being done, for a progress line.
+Progress = Callable[[str], None]
+
+
+def build_space(model: Model, *, limit: int = STATE_LIMIT) -> StateSpace:
+    """Generate the chain of a model, or take over a hand-written one.
+
+    Raises
+    ------
+    TooLarge
+        The chain has more states than `limit`.
+    """
+    if model.explicit:
+        return take(model)
+    subjects = tuple(target.of for target in model.targets if target.of is not None)
+    return generate(model, subjects, limit=limit)
+
+
+def solve_model(
+    model: Model,
+    times: Sequence[Fraction] = (),
+    *,
+    limit: int = STATE_LIMIT,
+    progress: Progress = lambda _: None,
+) -> Solution:
+    """Solve a model.
+
+    Parameters
+    ----------
+    model : Model
+    times : sequence of Fraction
+        Times in hours to answer measures at, beside the mission time; targets keep their own.
+    limit : int
+        Largest number of states.
+    progress : callable
+        Told what is being done.
+    """
+    progress("generating the chain")
+    space = build_space(model, limit=limit)
+    questions = all_questions(model, times)
+    points = [question.at_hours for question in questions if question.at_hours is not None]
+    answers = Answers(space, model.year_hours, points)
+    for question in questions:
+        answers.expect(question)
+    results: dict[Question, Result] = {}
+    for question in questions:
+        progress(f"{question.measure.replace('_', ' ')} of {space.size:,} states")
+        results[question] = _result(model, answers, question)
+    targets = tuple(
+        judge(target, results[question_of(model, target)], can_fail=_can_fail(answers, target.of))
+        for target in model.targets
+    )
+    plan = space.plan if isinstance(space, GeneratedSpace) else None
+    return Solution(
+        title=model.title or "",
+        source_name=model.source_name,
+        sha256=model.sha256,
+        version=__version__,
+        states=space.size,
+        transitions=answers.arrow_count,
+        year_hours=model.year_hours,
+        results=tuple(results.values()),
+        targets=targets,
+        assumptions=unsaid_choices(model, plan),
+        warnings=model.warnings,
+    )
+
+
+def _result(model: Model, answers: Answers, question: Question) -> Result:
+    try:
+        if question.measure.startswith("gain_over_"):
+            return _told(question, gain(model, answers, question))
+        return _told(question, answers.answer(question))
+    except IllPosed as error:
+        return _without(question, error.reason)
+    except NotReached as error:
+        return _without(question, f"not reached: {error}")
+
+
+def _told(question: Question, found: Enclosure) -> Result:
+    return Result(
+        measure=question.measure,
+        of=question.of,
+        state=question.state,
+        at_hours=question.at_hours,
+        for_hours=question.for_hours,
+        value=found.value,
+        lower=found.lower,
+        upper=found.upper,
+        unit=question.asked.unit,
+        method=found.method,
+    )
+
+
+def _without(question: Question, reason: str) -> Result:
+    return Result(
+        measure=question.measure,
+        of=question.of,
+        state=question.state,
+        at_hours=question.at_hours,
+        for_hours=question.for_hours,
+        value=None,
+        lower=None,
+        upper=None,
+        unit=question.asked.unit,
+        method="none",
+        reason=reason,
+    )
+
+
+def _can_fail(answers: Answers, of: str | None) -> bool:
+    """Tell whether a subject can go down; a crew pool, or a kind of several items, has no down state of its own."""
+    try:
+        return answers.can_fail(of)
+    except IllPosed:
+        return True
+
+
+@dataclass(frozen=True)
+class Check:
+    """What `markov check` finds without solving anything."""
+
+    title: str
+    source_name: str
+    states: int
+    transitions: int
+    assumptions: tuple[str, ...]
+    warnings: tuple[str, ...]
+
+
+def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
+    """Return the size of a model's chain, its unsaid choices and its warnings; solve nothing."""
+    space = build_space(model, limit=limit)
+    plan = space.plan if isinstance(space, GeneratedSpace) else None
+    return Check(
+        model.title or "",
+        model.source_name,
+        space.size,
+        Answers(space, model.year_hours).arrow_count,
+        unsaid_choices(model, plan),
+        model.warnings,
+    )

@@ -1,0 +1,300 @@
+"""The chart of one island: its own states and what every event does to them.
+
+The rules run here, on whole frontiers of the island's states.  The chain of the whole system is put together from the
+charts by looking up, so each consequence is worked out once, however often it occurs in the whole chain.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from markov.errors import TooLarge
+from markov.states.arrows import ArrowKind, ArrowKinds
+from markov.states.branching import Branch, Dice
+from markov.states.events import Event, Mode, island_events
+from markov.states.layout import Digits, Layout, Slot
+from markov.states.outage import drop_idle_outage
+
+Index = NDArray[np.int32]
+
+#: Largest number of states of one island that is worked out.
+ISLAND_LIMIT = 5_000_000
+
+
+@dataclass(frozen=True)
+class Table:
+    """Local transitions sorted by the state they leave.
+
+    Attributes
+    ----------
+    first : int64[k + 1]
+        Transitions ``first[i]`` to ``first[i + 1] - 1`` leave state i.
+    target, kind, multiple : int32[transitions]
+        State reached, number of the arrow kind, number of alike items.
+    """
+
+    first: NDArray[np.int64]
+    target: Index
+    kind: Index
+    multiple: Index
+
+    def __len__(self) -> int:
+        return len(self.target)
+
+
+@dataclass(frozen=True)
+class Chart:
+    """All states of one island and its transitions.
+
+    Attributes
+    ----------
+    layout : Layout
+    digits : int16[rows, k]
+        The k states; column 0 is the state with all good and duty filled by rank unless told otherwise.
+    start : int
+        Number of the initial state.
+    spontaneous : dict
+        Mode -> transitions that happen by themselves, multiples included.
+    crew_driven : dict
+        (slot number, stage) -> transitions per item that a crew works on.
+    takes, preempts : dict
+        (slot number, stage) -> state reached when a crew takes a waiting item, or leaves one; -1 where impossible.
+        Stage -1 of `takes` is an item whose repair never began.
+    """
+
+    layout: Layout
+    digits: Digits
+    start: int
+    spontaneous: dict[Mode, Table]
+    crew_driven: dict[tuple[int, int], Table]
+    takes: dict[tuple[int, int], Index]
+    preempts: dict[tuple[int, int], Index]
+
+    @property
+    def size(self) -> int:
+        """Number of states of the island."""
+        return int(self.digits.shape[1])
+
+
+@dataclass
+class _Raw:
+    """Transitions while the island is explored: where from, key of where to, kind, multiple."""
+
+    source: list[NDArray[np.int64]]
+    key: list[NDArray[np.int64]]
+    kind: list[NDArray[np.int32]]
+    multiple: list[NDArray[np.int64]]
+
+    @classmethod
+    def new(cls) -> _Raw:
+        return cls([], [], [], [])
+
+
+Move = Callable[[Digits], tuple[NDArray[np.bool_], Digits]]
+
+
+def build_chart(
+    layout: Layout, kinds: ArrowKinds, start: Digits, local_crews: frozenset[int] = frozenset()
+) -> Chart:
+    """Explore one island from its initial state.
+
+    Parameters
+    ----------
+    layout : Layout
+    kinds : ArrowKinds
+        Receives the arrow kinds.
+    start : int16[rows, 1]
+        Initial state.
+    local_crews : set of int
+        Slots whose every failed item has a crew at once; their repairs happen by themselves.
+    """
+    try:
+        strides = layout.strides()
+    except OverflowError as error:
+        raise TooLarge(
+            f"group {layout.node.name} has more conditions than fit one number; split it into several groups"
+        ) from error
+    events = island_events(Dice(kinds.rates), layout)
+    moves = _crew_moves(layout)
+    raw = [_Raw.new() for _ in events]
+    moved: dict[tuple[str, int, int], list[tuple[NDArray[np.int64], NDArray[np.int64]]]] = {key: [] for key in moves}
+    known = _Known(strides)
+    frontier = known.add(start.copy())
+    done = 0
+    while frontier.shape[1]:
+        number = np.arange(done, done + frontier.shape[1], dtype=np.int64)
+        done += frontier.shape[1]
+        if done > ISLAND_LIMIT:
+            raise TooLarge(f"group {layout.node.name} alone has more than {ISLAND_LIMIT:,} states")
+        reached: list[Digits] = []
+        for event, store in zip(events, raw, strict=True):
+            reached.extend(_apply(event, layout, kinds, known, frontier, number, store, local_crews))
+        for name, move in moves.items():
+            able, after = move(frontier)
+            if able.any():
+                moved[name].append((number[able], known.keys_of(after)))
+                reached.append(after)
+        frontier = known.add(np.concatenate(reached, axis=1)) if reached else frontier[:, :0]
+    return _finished(layout, kinds, known, events, raw, moved, local_crews)
+
+
+def _apply(
+    event: Event,
+    layout: Layout,
+    kinds: ArrowKinds,
+    known: _Known,
+    frontier: Digits,
+    number: NDArray[np.int64],
+    store: _Raw,
+    local_crews: frozenset[int],
+) -> list[Digits]:
+    exposed = event.exposed(frontier)
+    able = exposed > 0
+    if not able.any():
+        return []
+    by_crew = event.crew is not None and event.crew[0] not in local_crews
+    multiple = np.ones(int(able.sum()), np.int64) if by_crew else exposed[able].astype(np.int64)
+    before = frontier[:, able]
+    branch = Branch(before.copy(), before, number[able], multiple, event.rate, (event.cause,))
+    reached: list[Digits] = []
+    for result in event.apply(branch):
+        drop_idle_outage(layout.node, result.x)
+        if not len(result):
+            continue
+        kind = kinds.intern(
+            ArrowKind(
+                _told(result.story), result.rate, tuple(sorted(result.starts)), result.repaired, layout.node.name
+            )
+        )
+        store.source.append(result.origin)
+        store.key.append(known.keys_of(result.x))
+        store.kind.append(np.full(len(result), kind, np.int32))
+        store.multiple.append(result.multiple)
+        reached.append(result.x)
+    return reached
+
+
+def _told(story: tuple[str, ...]) -> str:
+    """Return the story of a branch as one line."""
+    return story[0] if len(story) == 1 else f"{story[0]}: {', '.join(story[1:])}"
+
+
+def _crew_moves(layout: Layout) -> dict[tuple[str, int, int], Move]:
+    """List what crews may do to waiting items where the queue is told apart."""
+    moves: dict[tuple[str, int, int], Move] = {}
+    for number, slot in enumerate(layout.slots):
+        if not slot.explicit_queue:
+            continue
+        moves["take", number, -1] = _mover(slot.fresh, slot.serve[0])
+        for stage, row in enumerate(slot.serve):
+            if slot.preemptible:
+                moves["take", number, stage] = _mover(slot.held[stage], row)
+                moves["preempt", number, stage] = _mover(row, slot.held[stage])
+    return moves
+
+
+def _mover(source: int, target: int) -> Move:
+    def move(x: Digits) -> tuple[NDArray[np.bool_], Digits]:
+        able = x[source] > 0
+        after = x[:, able].copy()
+        after[source] -= 1
+        after[target] += 1
+        return able, after
+
+    return move
+
+
+class _Known:
+    """The states found so far, in the order of discovery, with a sorted index of their keys."""
+
+    def __init__(self, strides: NDArray[np.int64]) -> None:
+        self._strides = strides
+        self._sorted = np.empty(0, np.int64)
+        self._numbers = np.empty(0, np.int64)
+        self._columns: list[Digits] = []
+        self._size = 0
+
+    def keys_of(self, x: Digits) -> NDArray[np.int64]:
+        keys: NDArray[np.int64] = self._strides @ x.astype(np.int64)
+        return keys
+
+    def add(self, x: Digits) -> Digits:
+        """Add the columns not known yet and return them, without repetition."""
+        keys, first = np.unique(self.keys_of(x), return_index=True)
+        if len(self._sorted):
+            at = np.minimum(np.searchsorted(self._sorted, keys), len(self._sorted) - 1)
+            new = self._sorted[at] != keys
+            keys, first = keys[new], first[new]
+        order = np.argsort(first, kind="stable")  # keep the order in which the events found them
+        columns = x[:, first[order]]
+        numbers = np.empty(len(keys), np.int64)
+        numbers[order] = np.arange(self._size, self._size + len(keys))
+        merged = np.concatenate((self._sorted, keys))
+        place = np.argsort(merged, kind="stable")
+        self._sorted = merged[place]
+        self._numbers = np.concatenate((self._numbers, numbers))[place]
+        self._columns.append(columns)
+        self._size += len(keys)
+        return columns
+
+    def numbers_of(self, keys: NDArray[np.int64]) -> Index:
+        return self._numbers[np.searchsorted(self._sorted, keys)].astype(np.int32)
+
+    def all(self) -> Digits:
+        return np.concatenate(self._columns, axis=1)
+
+
+def _finished(
+    layout: Layout,
+    kinds: ArrowKinds,
+    known: _Known,
+    events: list[Event],
+    raw: list[_Raw],
+    moved: dict[tuple[str, int, int], list[tuple[NDArray[np.int64], NDArray[np.int64]]]],
+    local_crews: frozenset[int],
+) -> Chart:
+    digits = known.all()
+    size = digits.shape[1]
+    by_mode: dict[Mode, list[_Raw]] = {"always": [], "system_up": [], "system_down": []}
+    crew_driven: dict[tuple[int, int], Table] = {}
+    for event, store in zip(events, raw, strict=True):
+        if event.crew is not None and event.crew[0] not in local_crews:
+            crew_driven[event.crew] = _table([store], kinds, known, size)
+        else:
+            by_mode[event.mode].append(store)
+    spontaneous: dict[Mode, Table] = {mode: _table(stores, kinds, known, size) for mode, stores in by_mode.items() if stores}
+    takes: dict[tuple[int, int], Index] = {}
+    preempts: dict[tuple[int, int], Index] = {}
+    for (what, slot, stage), found in moved.items():
+        reached = np.full(size, -1, np.int32)
+        for number, keys in found:
+            reached[number] = known.numbers_of(keys)
+        (takes if what == "take" else preempts)[slot, stage] = reached
+    return Chart(layout, digits, 0, spontaneous, crew_driven, takes, preempts)
+
+
+def _table(stores: list[_Raw], kinds: ArrowKinds, known: _Known, size: int) -> Table:
+    """Sort transitions by origin; drop those that lead back to where they started, unless they count something."""
+    if not any(store.source for store in stores):
+        empty = np.empty(0, np.int32)
+        return Table(np.zeros(size + 1, np.int64), empty, empty, empty)
+    source = np.concatenate([part for store in stores for part in store.source])
+    target = known.numbers_of(np.concatenate([part for store in stores for part in store.key]))
+    kind = np.concatenate([part for store in stores for part in store.kind])
+    multiple = np.concatenate([part for store in stores for part in store.multiple]).astype(np.int32)
+    counts = np.array([bool(each.starts or each.repaired) for each in kinds.kinds], np.bool_)
+    kept = (source != target) | counts[kind]
+    order = np.flatnonzero(kept)[np.argsort(source[kept], kind="stable")]
+    first = np.zeros(size + 1, np.int64)
+    np.cumsum(np.bincount(source[order], minlength=size), out=first[1:])
+    return Table(first, target[order], kind[order], multiple[order])
+
+
+def slot_counts(slot: Slot, digits: Digits) -> list[NDArray[np.int16]]:
+    """Return the items under repair, or calling for it, by finished stages; each shape (k,)."""
+    rows = slot.serve if slot.explicit_queue else slot.down
+    return [digits[row] for row in rows]

@@ -1,0 +1,287 @@
+"""A chain generated from units and groups, with the meaning of its states."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import cached_property, partial
+
+import numpy as np
+from numpy.typing import NDArray
+
+from markov.errors import IllPosed
+from markov.model import Model, names
+from markov.states.arrows import ArrowKinds
+from markov.states.chart import Chart, build_chart
+from markov.states.crews import Columns, CrewDesk
+from markov.states.generation import STATE_LIMIT, Packing, explore
+from markov.states.layout import Digits, Layout, Node, Slot, Train, node_of
+from markov.states.naming import island_label, join_labels
+from markov.states.plan import Plan, Pool, plan
+from markov.states.redundancy import critical
+from markov.states.space import Arrows, Mask, Values, delivered_share, no_such_state, structure
+from markov.states.takeover import fill_by_rank
+
+
+@dataclass(frozen=True)
+class GeneratedSpace:
+    """States and transitions generated from a plan; see `markov.states.space.StateSpace`."""
+
+    plan: Plan
+    charts: tuple[Chart, ...]
+    desk: CrewDesk
+    packing: Packing
+    keys: NDArray[np.int64]
+    arrows: Arrows
+    kinds: ArrowKinds
+    start: tuple[tuple[int, Fraction], ...]
+
+    @property
+    def size(self) -> int:
+        """Number of states."""
+        return len(self.keys)
+
+    @cached_property
+    def columns(self) -> Columns:
+        """Local state numbers of all states, shape (islands, n)."""
+        return self.packing.unpack(self.keys)
+
+    @cached_property
+    def up(self) -> Mask:
+        """States in which the system delivers, shape (n,)."""
+        if self.plan.model.system is None:
+            raise AssertionError("a generated chain has a system")
+        return structure(self.plan.model.system, self.delivers)
+
+    def delivers(self, subject: str) -> Mask:
+        """States in which a group, or a kind with a single item, delivers, shape (n,)."""
+        island = self.plan.island(subject)
+        if island is not None:
+            chart = self.charts[island]
+            return chart.layout.node.delivers(chart.digits)[self.columns[island]]
+        for number, chart in enumerate(self.charts):
+            for path in chart.layout.groups[1:]:
+                train = path[-1]
+                if isinstance(train, Train) and train.unit == subject:
+                    return np.asarray(train.good(chart.digits) > 0)[self.columns[number]]
+        places = self.plan.places_of(subject)
+        items = sum(self.charts[island].layout.slots[number].count for island, number in places)
+        if items > 1:
+            raise IllPosed(
+                f"{subject} stands for {items} items, which are not up or down as one; ask for a group, "
+                "or for mean_units_failed"
+            )
+        return self.failed(subject) == 0
+
+    def failed(self, subject: str | None) -> Values:
+        """Failed items of the system, a group or a kind, shape (n,)."""
+        count = np.zeros(self.size)
+        for island, chart in enumerate(self.charts):
+            for slot in chart.layout.slots:
+                if self._belongs(subject, chart.layout.node.name, slot):
+                    count += slot.failed(chart.digits)[self.columns[island]]
+        return count
+
+    def _belongs(self, subject: str | None, island: str, slot: Slot) -> bool:
+        """Tell whether the items of a slot count for a subject: a group, a train, a kind, or the system (None)."""
+        if subject is None:
+            return self.plan.model.system is not None and island in names(self.plan.model.system)
+        return subject in (island, slot.group, slot.unit, slot.name)
+
+    def slots_of(self, subject: str | None) -> frozenset[tuple[str, str]]:
+        """Return (island, kind) of every slot whose events count for a subject (None: the system)."""
+        return frozenset(
+            (chart.layout.node.name, slot.name)
+            for chart in self.charts
+            for slot in chart.layout.slots
+            if self._belongs(subject, chart.layout.node.name, slot)
+        )
+
+    def capacity(self, subject: str | None) -> Values:
+        """Delivered share of the system or a group, shape (n,)."""
+        if subject is None:
+            if self.plan.model.system is None:
+                raise AssertionError("a generated chain has a system")
+            return delivered_share(self.plan.model.system, self._share_of)
+        if self.plan.island(subject) is None:
+            raise IllPosed(f"{subject} delivers as part of its group; ask for the capacity of the group")
+        return self._share_of(subject)
+
+    def _share_of(self, name: str) -> Values:
+        island = self.plan.island(name)
+        if island is None:
+            raise AssertionError(f"{name} is not in the chain")
+        chart = self.charts[island]
+        return np.asarray(_delivered(chart.layout.node, chart.digits)[self.columns[island]])
+
+    def without_redundancy(self, subject: str | None) -> Mask:
+        """States that are up and in which one further unit fault would bring the system, or a group, down, shape (n,).
+
+        The fault is taken as covered, starts as successful, takeovers as done at once.
+        """
+        if subject is not None:
+            island = self.plan.island(subject)
+            if island is None:
+                raise IllPosed(f"{subject} is not a group of the top level; ask for the group that it belongs to")
+            return np.asarray(self._critical[island][self.columns[island]])
+        model = self.plan.model
+        if model.system is None:
+            raise AssertionError("a generated chain has a system")
+        result = np.zeros(self.size, np.bool_)
+        for island, flags in enumerate(self._critical):
+            fallen = self.plan.islands[island].node.name
+            here = flags[self.columns[island]]
+            if fallen not in names(model.system) or not here.any():
+                continue
+            without = structure(model.system, partial(self._with_one_down, fallen))
+            result |= self.up & here & ~without
+        return result
+
+    def _with_one_down(self, fallen: str, name: str) -> Mask:
+        return np.zeros(self.size, np.bool_) if name == fallen else self.delivers(name)
+
+    @cached_property
+    def _critical(self) -> tuple[Mask, ...]:
+        return tuple(critical(chart.layout, chart.digits) for chart in self.charts)
+
+    # --- crews ---------------------------------------------------------------------------------------------------
+
+    def pools(self, subject: str | None) -> tuple[Pool, ...]:
+        """Return the crew pools that a question concerns: all of them, or the one of that name."""
+        every = (*self.plan.pools, *self.plan.free_pools)
+        return tuple(pool for pool in every if subject in (None, pool.name))
+
+    def crews_at_work(self, pool: Pool) -> Values:
+        """Count crews at work, shape (n,)."""
+        if pool in self.plan.pools:
+            return self.desk.busy(pool, self.columns).astype(np.float64)
+        return self.calling(pool)
+
+    def calling(self, pool: Pool) -> Values:
+        """Count items that wait for a crew or have one, shape (n,)."""
+        count = np.zeros(self.size)
+        for kind in pool.kinds:
+            for island, number in kind.places:
+                slot = self.charts[island].layout.slots[number]
+                if slot.repair is not None:
+                    count += slot.calling(self.charts[island].digits)[self.columns[island]]
+        return count
+
+    # --- names ---------------------------------------------------------------------------------------------------
+
+    @cached_property
+    def _ambiguous(self) -> frozenset[str]:
+        """Islands whose labels could be taken for those of another: a kind that stands in several groups."""
+        seen: dict[str, list[str]] = {}
+        for layout in self.plan.islands:
+            for slot in layout.slots:
+                seen.setdefault(slot.unit, []).append(layout.node.name)
+        every = {island for islands in seen.values() if len(islands) > 1 for island in islands}
+        bare = {layout.node.name for layout in self.plan.islands if _has_group_words(layout)}
+        return frozenset(every | bare) if len(self.plan.islands) > 1 else frozenset()
+
+    def label(self, state: int) -> str:
+        """Name of a state."""
+        parts = []
+        for island, chart in enumerate(self.charts):
+            local = int(self.columns[island, state])
+            column = [int(value) for value in chart.digits[:, local]]
+            text = island_label(
+                chart.layout, column, _ordinary(chart.layout), alone=len(self.charts) == 1
+            )
+            parts.append((chart.layout.node.name, text))
+        return join_labels(parts, self._ambiguous)
+
+    @cached_property
+    def _numbers(self) -> dict[str, int]:
+        return {self.label(state): state for state in range(self.size)}
+
+    def find(self, name: str) -> int:
+        """Number of the state of that name, or of that number as the diagram prints it (S0, S1 …)."""
+        if name.startswith("S") and name[1:].isdigit() and int(name[1:]) < self.size:
+            return int(name[1:])
+        try:
+            return self._numbers[name]
+        except KeyError:
+            raise no_such_state(name) from None
+
+
+def _delivered(node: Node, x: Digits) -> Values:
+    """Sum the shares of the members on duty, at most 1; an active group in an outage delivers nothing; shape (k,)."""
+    count = np.zeros(x.shape[1])
+    share = np.zeros(x.shape[1])
+    for entry in node.entries:
+        on_duty = entry.good(x) if node.active else x[entry.duty]
+        if isinstance(entry, Train):
+            share += on_duty * _delivered(entry.node, x) / node.required
+        elif entry.capacity is not None:
+            share += on_duty * float(entry.capacity.exact)
+        else:
+            count += on_duty
+    share += count / node.required
+    stopped = node.in_outage(x) if node.active or node.outcome == "lost" else np.zeros(x.shape[1], np.bool_)
+    share[stopped | node.switching_now(x)] = 0.0
+    return np.minimum(share, 1.0)
+
+
+def _has_group_words(layout: Layout) -> bool:
+    groups = [node_of(path[-1]) for path in layout.groups]
+    return any(node.outage >= 0 or node.switching for node in groups)
+
+
+def _ordinary(layout: Layout) -> list[int]:
+    return [int(value) for value in initial_digits(layout, {})[:, 0]]
+
+
+def initial_digits(layout: Layout, failed: dict[str, int]) -> Digits:
+    """Return the initial state of an island: the given numbers of failed items, duty filled by rank."""
+    x = layout.empty()
+    for slot in layout.slots:
+        x[slot.entry_row] += failed.get(slot.unit, 0)
+    fill_by_rank(layout.node, x)
+    return x
+
+
+def generate(model: Model, subjects: tuple[str, ...] = (), *, limit: int = STATE_LIMIT) -> GeneratedSpace:
+    """Generate the chain of a model with units and groups.
+
+    Parameters
+    ----------
+    model : Model
+    subjects : tuple of str
+        Groups and units outside the system that a question asks about.
+    limit : int
+        Largest number of states.
+
+    Raises
+    ------
+    TooLarge
+        The chain has more states than `limit`, or cannot be numbered.
+    """
+    drawn = plan(model, subjects)
+    kinds = ArrowKinds()
+    contended = {unit.unit for pool in drawn.pools for unit in pool.kinds}
+    charts = tuple(
+        build_chart(
+            layout,
+            kinds,
+            initial_digits(layout, _initially_failed(model, layout)),
+            frozenset(number for number, slot in enumerate(layout.slots) if slot.unit not in contended),
+        )
+        for layout in drawn.islands
+    )
+    desk = CrewDesk(charts, drawn.pools)
+    island_of = {layout.node.name: number for number, layout in enumerate(drawn.islands)}
+    found = explore(charts, desk, kinds, model.system, island_of, limit=limit)
+    start = tuple((state, Fraction(weight, choices)) for state, weight, choices in found.start)
+    return GeneratedSpace(drawn, charts, desk, Packing(charts), found.keys, found.arrows, kinds, start)
+
+
+def _initially_failed(model: Model, layout: Layout) -> dict[str, int]:
+    """Return kind -> items failed at time zero in one island."""
+    failed: dict[str, int] = {}
+    for name, faults in model.initial.items():
+        for slot in layout.slots:
+            if name in (slot.unit, f"{slot.group}.{slot.unit}"):
+                failed[slot.unit] = faults.failed
+    return failed

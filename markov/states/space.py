@@ -1,0 +1,102 @@
+"""The finished chain: its states, its transitions as columns, and what each state means."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from markov.errors import IllPosed
+from markov.model import AllOf, AnyOf, AtLeast, Named, Success
+from markov.states.arrows import ArrowKinds
+
+Mask = NDArray[np.bool_]
+Values = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Arrows:
+    """Transitions as columns, one entry a transition; shape (a,) each.
+
+    `source` and `target` are state numbers, `kind` numbers an arrow kind, `multiple` is the whole number of alike
+    items that the rate of the kind is multiplied by.  An entry whose ends agree changes nothing and is kept only
+    because it counts a start or a repair.
+    """
+
+    source: NDArray[np.int32]
+    target: NDArray[np.int32]
+    kind: NDArray[np.int32]
+    multiple: NDArray[np.int32]
+
+    def __len__(self) -> int:
+        return len(self.source)
+
+    @property
+    def moving(self) -> Mask:
+        """Which transitions change the state."""
+        return self.source != self.target
+
+
+class StateSpace(Protocol):
+    """What the bridge asks of a chain, generated or written by hand."""
+
+    size: int
+    arrows: Arrows
+    kinds: ArrowKinds
+    start: tuple[tuple[int, Fraction], ...]
+
+    @property
+    def up(self) -> Mask:
+        """States in which the system delivers, shape (n,)."""
+
+    def delivers(self, subject: str) -> Mask:
+        """States in which a group or unit delivers, shape (n,)."""
+
+    def failed(self, subject: str | None) -> Values:
+        """Failed items of the system, a group or a kind, shape (n,)."""
+
+    def capacity(self, subject: str | None) -> Values:
+        """Delivered share, shape (n,)."""
+
+    def label(self, state: int) -> str:
+        """Name of a state, as the diagram shows it and a target may ask for it."""
+
+    def find(self, name: str) -> int:
+        """Number of the state of that name."""
+
+
+def structure(success: Success, delivers: Callable[[str], Mask]) -> Mask:
+    """Evaluate the success of a structure over all states, shape (n,)."""
+    if isinstance(success, Named):
+        return delivers(success.name)
+    parts = np.array([structure(part, delivers) for part in success.of])
+    if isinstance(success, AllOf):
+        return np.asarray(parts.all(axis=0))
+    if isinstance(success, AnyOf):
+        return np.asarray(parts.any(axis=0))
+    if isinstance(success, AtLeast):
+        return np.asarray(parts.sum(axis=0) >= success.count)
+    raise AssertionError(f"unknown structure {success!r}")
+
+
+def delivered_share(success: Success, capacity: Callable[[str], Values]) -> Values:
+    """Evaluate the delivered share of a structure: the least, the greatest or the k-th greatest of its parts."""
+    if isinstance(success, Named):
+        return capacity(success.name)
+    parts = np.array([delivered_share(part, capacity) for part in success.of])
+    if isinstance(success, AllOf):
+        return np.asarray(parts.min(axis=0))
+    if isinstance(success, AnyOf):
+        return np.asarray(parts.max(axis=0))
+    if isinstance(success, AtLeast):
+        return np.asarray(np.sort(parts, axis=0)[len(parts) - success.count])
+    raise AssertionError(f"unknown structure {success!r}")
+
+
+def no_such_state(name: str) -> IllPosed:
+    """Return the reason given for a state that is not in the chain."""
+    return IllPosed(f"no state of this chain is named {name!r}; `markov draw` shows the names")

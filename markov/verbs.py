@@ -1,0 +1,147 @@
+"""The verbs of the public door, as the command line has them: read, solve, check, draw, draft."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import fields
+from fractions import Fraction
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from markov import results
+from markov.errors import UsageError
+
+if TYPE_CHECKING:
+    from markov.model import Model
+    from markov.output.drawing import Drawn
+    from markov.solving import Check
+
+
+class Solution(results.Solution):
+    """A solved model, shown as tables in a notebook; see `markov.results.Solution`."""
+
+    def _repr_html_(self) -> str:
+        from markov.output.notebook import solution_html
+
+        return solution_html(self)
+
+
+def read(source: str | Path) -> Model:
+    """Read a spec from a file, or from standard input where `source` is ``-``.
+
+    Raises
+    ------
+    SpecError
+        The spec is at fault; holds every problem found.
+    UsageError
+        The file cannot be read.
+    """
+    from markov.spec import read as read_spec
+
+    return read_spec(source)
+
+
+def solve(spec: Model | str | Path, *, at: Iterable[str | float | Fraction] = ()) -> Solution:
+    """Solve a model and judge its targets.
+
+    Parameters
+    ----------
+    spec : Model, str or Path
+        A model, or the file of a spec.
+    at : iterable of str, float or Fraction
+        Times beside the mission time: text with a unit of measure (``"1 y"``), or numbers of hours.
+
+    Returns
+    -------
+    Solution
+        Results with bounds, verdicts, choices left unsaid, warnings.
+
+    Raises
+    ------
+    SpecError, UsageError
+        The spec or the call is at fault.
+    TooLarge
+        The chain would be too large.
+    """
+    from markov.solving import solve_model
+
+    model = _model(spec)
+    solved = solve_model(model, [hours(time, model) for time in at])
+    return Solution(**{each.name: getattr(solved, each.name) for each in fields(solved)})
+
+
+def check(spec: Model | str | Path) -> Check:
+    """Return the size of the chain, the choices left unsaid and the warnings; solve nothing."""
+    from markov.solving import check_model
+
+    return check_model(_model(spec))
+
+
+def draw(spec: Model | str | Path, path: str | Path, *, overwrite: bool = False, **options: Any) -> Drawn:
+    """Draw the state diagram into a file; the format follows the ending (.svg, .pdf, .png, .dot).
+
+    Raises
+    ------
+    UsageError
+        An ending that is none of these, or a file that exists while `overwrite` is false.
+    DrawingError
+        The picture could not be made.
+    """
+    from markov.output.drawing import write_diagram
+    from markov.output.state_diagram import state_diagram
+    from markov.solving import build_space
+
+    model = _model(spec)
+    return write_diagram(state_diagram(model, build_space(model)), Path(path), overwrite=overwrite, **options)
+
+
+def draft(path: str | Path) -> Path:
+    """Write a commented first spec to start from; an existing file is never touched.
+
+    Raises
+    ------
+    UsageError
+        The file exists, or its folder does not.
+    """
+    from markov.spec.draft import draft_text
+
+    target = Path(path)
+    try:
+        with target.open("x", encoding="utf-8") as stream:
+            stream.write(draft_text())
+    except FileExistsError:
+        raise UsageError(f"{target} exists; a draft is never written over a file; choose another name") from None
+    except OSError as error:
+        raise UsageError(f"{target} cannot be written: {error.strerror}") from error
+    return target
+
+
+def _model(spec: Model | str | Path) -> Model:
+    from markov.model import Model
+
+    return spec if isinstance(spec, Model) else read(spec)
+
+
+def hours(time: str | float | Fraction, model: Model) -> Fraction:
+    """Return a time in hours from text with a unit of measure, or from a number of hours."""
+    import math
+
+    from markov.quantities import QuantityError, parse_quantity
+
+    if isinstance(time, str):
+        try:
+            found = parse_quantity(
+                time,
+                parameters={name: each.value for name, each in model.parameters.items()},
+                year=model.year_hours,
+            )
+        except QuantityError as error:
+            raise UsageError(f"time {time!r}: {error}") from error
+        if found.dimension != "time":
+            raise UsageError(f"time {time!r}: not a time; write a number with a unit, such as 1 y or 500 h")
+        return found.exact
+    if isinstance(time, float) and not math.isfinite(time):
+        raise UsageError(f"time {time}: expected a finite number of hours")
+    if time < 0:
+        raise UsageError(f"time {time}: expected a time that is not negative")
+    return Fraction(time)
