@@ -28,8 +28,7 @@ from markov.errors import (
 if TYPE_CHECKING:
     from markov.measures import MEASURES, Measure
     from markov.model import Model
-    from markov.results import Result, TargetResult
-    from markov.solving import Check
+    from markov.results import Check, Result, TargetResult
     from markov.verbs import Solution, check, draft, draw, read, solve
 
 __all__ = [
@@ -63,7 +62,7 @@ _LATE = {
     "Model": "markov.model",
     "Result": "markov.results",
     "TargetResult": "markov.results",
-    "Check": "markov.solving",
+    "Check": "markov.results",
     **dict.fromkeys(("Solution", "check", "draft", "draw", "read", "solve"), "markov.verbs"),
 }
 

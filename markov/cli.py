@@ -50,12 +50,14 @@ Examples:
   cat plant.yaml | markov solve -"""
 )
 @_SPEC
-@click.option("--at", "times", multiple=True, metavar="TIME", help='Answer at this time too, such as "1 y"; repeatable.')
+@click.option(
+    "--at", "times", multiple=True, metavar="TIME", help='Answer at this time too, such as "1 y"; repeatable.'
+)
 @click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
 def solve(spec: str, times: tuple[str, ...], as_json: bool) -> int:
     """Solve SPEC (a file, or - for standard input): measures, verdicts, unsaid choices."""
+    from markov.evaluation import solve_model
     from markov.progress import progress_line
-    from markov.solving import solve_model
     from markov.verbs import hours, read
 
     model = read(spec)
@@ -82,8 +84,8 @@ Example:
 @click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
 def check(spec: str, as_json: bool) -> int:
     """Read SPEC and tell its problems, size, unsaid choices and warnings; solve nothing."""
+    from markov.evaluation import check_model
     from markov.progress import progress_line
-    from markov.solving import check_model
     from markov.verbs import read
 
     model = read(spec)
@@ -116,10 +118,10 @@ def draw(spec: str, picture: str, values: bool, overwrite: bool) -> int:
     """Draw the state diagram of SPEC into FILE: .svg, .pdf, .png or .dot by its ending."""
     from pathlib import Path
 
+    from markov.evaluation import build_space
     from markov.output.drawing import check_target, write_diagram
     from markov.output.state_diagram import state_diagram
     from markov.progress import progress_line
-    from markov.solving import build_space
     from markov.verbs import read
 
     check_target(Path(picture), overwrite=overwrite)
@@ -223,4 +225,3 @@ def _internal(error: Exception) -> int:
 def _silence() -> None:
     """Let the interpreter end quietly after the reader of standard output has gone."""
     os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-

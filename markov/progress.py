@@ -16,7 +16,7 @@ PATIENCE = 2.0
 def progress_line() -> Iterator[Callable[[str], None]]:
     """Give a function that is told what is being done; it speaks only if the work lasts.
 
-    On a terminal one line is rewritten every second and removed at the end; elsewhere each step that lasts is told once.
+    On a terminal one line is rewritten every second and removed at the end; elsewhere each lasting step is told once.
     """
     state = {"doing": "working"}
     done = threading.Event()

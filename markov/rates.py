@@ -32,6 +32,8 @@ class Factor:
         Where the value stands in the spec, such as ``units.pump.failure_rate``.
     is_share : bool
         Whether it is a probability or another plain factor, not a rate.
+    base : Factor or None
+        What this factor is the complement of.
     """
 
     symbol: str
@@ -39,10 +41,11 @@ class Factor:
     meaning: str
     origin: str
     is_share: bool = False
+    base: Factor | None = None
 
     def complement(self) -> Factor:
         """Return one minus this probability, exact."""
-        return Factor(f"(1−{self.symbol})", 1 - self.exact, f"complement of {self.symbol}", self.origin, True)
+        return Factor(f"(1−{self.symbol})", 1 - self.exact, f"complement of {self.symbol}", self.origin, True, self)
 
 
 _SUPERSCRIPTS = str.maketrans("0123456789", "⁰¹²³⁴⁵⁶⁷⁸⁹")

@@ -130,3 +130,17 @@ class Solution:
             if result.measure == measure and result.of == of and (at_hours is None or result.at_hours == at_hours):
                 return result
         raise KeyError(f"no result {measure!r} of {of or 'the system'} in this solution")
+
+
+@dataclass(frozen=True)
+class Check:
+    """What `markov check` finds without solving anything: size, unsaid choices, warnings."""
+
+    title: str
+    source_name: str
+    sha256: str
+    version: str
+    states: int
+    transitions: int
+    assumptions: tuple[str, ...]
+    warnings: tuple[str, ...]

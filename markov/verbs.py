@@ -14,7 +14,7 @@ from markov.errors import UsageError
 if TYPE_CHECKING:
     from markov.model import Model
     from markov.output.drawing import Drawn
-    from markov.solving import Check
+    from markov.results import Check
 
 
 class Solution(results.Solution):
@@ -63,7 +63,7 @@ def solve(spec: Model | str | Path, *, at: Iterable[str | float | Fraction] = ()
     TooLarge
         The chain would be too large.
     """
-    from markov.solving import solve_model
+    from markov.evaluation import solve_model
 
     model = _model(spec)
     solved = solve_model(model, [hours(time, model) for time in at])
@@ -72,7 +72,7 @@ def solve(spec: Model | str | Path, *, at: Iterable[str | float | Fraction] = ()
 
 def check(spec: Model | str | Path) -> Check:
     """Return the size of the chain, the choices left unsaid and the warnings; solve nothing."""
-    from markov.solving import check_model
+    from markov.evaluation import check_model
 
     return check_model(_model(spec))
 
@@ -87,9 +87,9 @@ def draw(spec: Model | str | Path, path: str | Path, *, overwrite: bool = False,
     DrawingError
         The picture could not be made.
     """
+    from markov.evaluation import build_space
     from markov.output.drawing import write_diagram
     from markov.output.state_diagram import state_diagram
-    from markov.solving import build_space
 
     model = _model(spec)
     return write_diagram(state_diagram(model, build_space(model)), Path(path), overwrite=overwrite, **options)

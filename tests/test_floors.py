@@ -13,10 +13,11 @@ import pytest
 DOOR = "the public door"
 
 LOW = {"errors", "quantities", "rates", "measures"}
-BELOW_EVALUATION = LOW | {"model", "states", "chain", "results", "unsaid"}
+BELOW_EVALUATION = LOW | {"model", "states", "chain", "results", "_version"}
 BELOW_STUDIES = BELOW_EVALUATION | {"spec", "evaluation"}
 BELOW_OUTPUT = BELOW_STUDIES | {"studies"}
-BELOW_CLI = BELOW_OUTPUT | {"output", "_version", DOOR}
+BELOW_VERBS = BELOW_OUTPUT | {"output"}
+BELOW_CLI = BELOW_VERBS | {"verbs", "progress", DOOR}
 
 # A room, and the other rooms that it may know. `_version` holds one text and is known by the door and the roof.
 FLOORS: dict[str, set[str]] = {
@@ -30,17 +31,18 @@ FLOORS: dict[str, set[str]] = {
     "spec": LOW | {"model"},
     "states": LOW | {"model"},
     "results": LOW,
-    "unsaid": LOW | {"model", "states"},
     "evaluation": BELOW_EVALUATION,
     "studies": BELOW_STUDIES,
     "output": BELOW_OUTPUT,
-    DOOR: BELOW_OUTPUT | {"output", "_version"},
+    "verbs": BELOW_VERBS,
+    "progress": set(),
+    DOOR: BELOW_VERBS | {"verbs"},
     "cli": BELOW_CLI,
     "__main__": {"cli"},
 }
 
 # Who may know both the mathematics and the rules that make states.
-BRIDGES = {"evaluation", "cli", DOOR}
+BRIDGES = {"evaluation"}
 
 # The declared package that an import comes with, where the names differ.
 INSTALLED_AS = {"yaml": "pyyaml", "docx": "python-docx", "distributed": "dask", "pydantic_core": "pydantic"}

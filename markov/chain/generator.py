@@ -111,10 +111,8 @@ class Generator:
 
     def reversed(self) -> Generator:
         """Return the chain with every arrow turned around (for questions of reachability)."""
-        order = np.lexsort((self.source, self.target))
-        return Generator(
-            self.n, self.target[order].copy(), self.source[order].copy(), self.rates.at(order), self.rate_error
-        )
+        order = by_target(self)
+        return Generator(self.n, self.target[order], self.source[order], self.rates.at(order), self.rate_error)
 
     def classes(self) -> tuple[int, Numbers]:
         """Return the number of communicating classes with the class of each state."""
@@ -166,11 +164,11 @@ class Generator:
         number[members] = np.arange(members.size, dtype=np.int32)
         inside = number[self.source] >= 0
         within = inside & (number[self.target] >= 0)
-        source, target = number[self.source[within]], number[self.target[within]]
-        order = np.lexsort((target, source))
-        chain = Generator(
-            int(members.size), source[order], target[order], self.rates.at(within).at(order), self.rate_error
-        )
+        source, target, rates = number[self.source[within]], number[self.target[within]], self.rates.at(within)
+        if bool((np.diff(members) < 0).any()):
+            order = np.lexsort((target, source))
+            source, target, rates = source[order], target[order], rates.at(order)
+        chain = Generator(int(members.size), source, target, rates, self.rate_error)
         out = inside & ~within & (np.asarray(label)[self.target] >= 0)
         owner = number[self.source[out]].astype(np.int64) * count + np.asarray(label)[self.target[out]]
         order = np.argsort(owner, kind="stable")
@@ -184,6 +182,13 @@ class Generator:
             Doubled(summed.high.reshape(shape), summed.low.reshape(shape)),
             (self.rate_error + total_error(longest)) * (1.0 + 1e-12),
         )
+
+
+def by_target(chain: Generator) -> NDArray[np.int64]:
+    """Return the order of the transitions by target then source (a transposition, cheaper than sorting)."""
+    index = np.arange(chain.source.size, dtype=np.int64)
+    turned = csr_array((index, chain.target, chain.pointers), shape=(chain.n, chain.n)).tocsc()
+    return np.asarray(turned.data, dtype=np.int64)
 
 
 @dataclass(frozen=True, eq=False)
@@ -270,13 +275,14 @@ def aggregate(
             f"to {LARGEST_RATE:g}; change the unit of time"
         )
     pair = tail * n + head
-    order = np.argsort(pair, kind="stable")
-    pair = pair[order]
+    if not bool((pair[1:] > pair[:-1]).all()):
+        order = np.argsort(pair, kind="stable")
+        pair, first, second = pair[order], first[order], second[order]
     fresh = np.ones(pair.size, dtype=bool)
     fresh[1:] = pair[1:] != pair[:-1]
     owner = np.cumsum(fresh) - 1
     longest = int(np.bincount(owner).max()) if owner.size else 0
-    rates = totals(Doubled(first[order], second[order]), owner, int(fresh.sum()))
+    rates = totals(Doubled(first, second), owner, int(fresh.sum()))
     distinct = pair[fresh]
     return Generator(
         n,

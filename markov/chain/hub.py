@@ -25,7 +25,7 @@ from numpy.typing import NDArray
 from markov.chain import dense
 from markov.chain.bounds import Floats
 from markov.chain.doubled import ADD, DIVIDE, MULTIPLY, Doubled, add, divide, multiply, plain, total, total_error, zeros
-from markov.chain.generator import Generator, Restriction
+from markov.chain.generator import Generator, Restriction, by_target
 from markov.chain.mmatrix import Flow, Solver, solve_certified
 from markov.chain.sweeps import sweeps
 from markov.errors import NotReached
@@ -71,7 +71,7 @@ class Hub:
     @property
     def method(self) -> str:
         """How, for people."""
-        return f"{self._solvers['row'].name}, certified entry by entry"
+        return f"{self._row[1].name}, certified entry by entry"
 
     @cached_property
     def inward(self) -> Doubled:
@@ -95,24 +95,28 @@ class Hub:
 
     def _flow(self, side: Literal["row", "column"]) -> Flow:
         inner = self._part.chain
-        tail, head = (inner.source, inner.target) if side == "row" else (inner.target, inner.source)
-        order = np.lexsort((tail, head))
-        return Flow(tail[order], head[order], inner.rates.at(order), inner.rate_error, *self._exits)
+        if side == "column":
+            return Flow(inner.target, inner.source, inner.rates, inner.rate_error, *self._exits)
+        order = by_target(inner)
+        return Flow(inner.source[order], inner.target[order], inner.rates.at(order), inner.rate_error, *self._exits)
 
     @cached_property
-    def _flows(self) -> dict[str, Flow]:
-        return {"row": self._flow("row"), "column": self._flow("column")}
+    def _row(self) -> tuple[Flow, Solver]:
+        flow = self._flow("row")
+        return flow, self._dense or sweeps(flow, self._levels)
 
     @cached_property
-    def _solvers(self) -> dict[str, Solver]:
+    def _column(self) -> tuple[Flow, Solver]:
+        flow = self._flow("column")
+        return flow, self._dense.turned("column") if self._dense else sweeps(flow, self._levels)
+
+    @cached_property
+    def _dense(self) -> dense.DenseElimination | None:
         inner = self._part.chain
-        if inner.n <= dense.LARGEST_DENSE:
-            away = self.loss.at(self.others)
-            loss = self.inward.high + self.inward.low + away.high + away.low
-            made = dense.eliminate(inner.matrix().toarray(), loss)
-            return {"row": made, "column": made.turned("column")}
-        level = self._levels
-        return {side: sweeps(self._flows[side], level) for side in ("row", "column")}
+        if inner.n > dense.LARGEST_DENSE:
+            return None
+        away = self.loss.at(self.others)
+        return dense.eliminate(inner.matrix().toarray(), self.inward.high + self.inward.low + away.high + away.low)
 
     @cached_property
     def _levels(self) -> NDArray[np.int64]:
@@ -132,7 +136,8 @@ class Hub:
 
     def solve(self, side: Literal["row", "column"], b: Doubled, b_error: float) -> tuple[Doubled, float]:
         """Solve one system off the hub, certified."""
-        return solve_certified(self._flows[side], b, b_error, self._solvers[side])
+        flow, solver = self._row if side == "row" else self._column
+        return solve_certified(flow, b, b_error, solver)
 
     @cached_property
     def excursion(self) -> tuple[Doubled, float]:

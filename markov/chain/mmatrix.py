@@ -168,7 +168,7 @@ def solve_certified(flow: Flow, b: Doubled, b_error: float, solver: Solver) -> t
         if not reached < 0.5 * best:
             break
         y, best = tried, reached
-        if best < 1e-22:
+        if best < 1e-27:
             break
     values = y.high + y.low
     fed = values > 0.0

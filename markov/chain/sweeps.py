@@ -12,7 +12,6 @@ Source: R. S. Varga, Matrix Iterative Analysis (1962), chapter 3; the order by l
 
 from __future__ import annotations
 
-import warnings
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -102,9 +101,10 @@ class Sweeps:
 
         if not self._factor:
             system = csc_array(diags_array(self.flow.exits.high) - self.flow.incoming)
-            with warnings.catch_warnings():
-                warnings.simplefilter("error")
+            try:
                 self._factor.append(splu(system, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0))
+            except RuntimeError as reason:
+                raise NotReached(f"sparse factorisation of {self.flow.m} states: {reason}") from reason
         y = np.maximum(self._factor[0].solve(b), 0.0)[self.order]
         right = b[self.order]
         for _ in range(8):

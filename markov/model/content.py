@@ -95,12 +95,16 @@ class Content(Part):
     )
     notes: MaybeText = Field(None, description="Free text.")
     year: Annotated[Quantity, Reads("time", above_zero=True, year_known=False)] = Field(
-        parse_quantity("8760 h"), description="Length of a year; `y` and `month` (a twelfth of it) follow it."
+        parse_quantity("8760 h"),
+        description="Length of a year; `y` and `month` (a twelfth of it) follow it.",
+        json_schema_extra={"default": "8760 h"},
     )
     parameters: dict[KeyName, Parameter] = Field(
         default_factory=dict, description="Named values: `NAME: value`, or a mapping with source and uncertainty."
     )
-    units: dict[KeyName, Unit] = Field(default_factory=dict, description="Kinds of equipment by name.")
+    units: dict[KeyName, Unit] = Field(
+        default_factory=dict, description="Kinds of equipment by name; needed unless the chain is written by hand."
+    )
     groups: dict[KeyName, Group] = Field(
         default_factory=dict, description="Units that stand in for each other, by name."
     )
@@ -108,7 +112,9 @@ class Content(Part):
         default_factory=dict,
         description="Pools of repair crews by name; a repairable unit in no pool has a crew for each item.",
     )
-    system: MaybeSuccess = Field(None, description="What has to be up for the system to be up.")
+    system: MaybeSuccess = Field(
+        None, description="What has to be up for the system to be up; needed unless the chain is written by hand."
+    )
     while_down: WhileDown = Field(
         "continue",
         description="What units do while the system is down: `continue` to fail at their present rate, "

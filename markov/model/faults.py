@@ -101,6 +101,8 @@ def gathered(error: ValidationError) -> tuple[list[Fault], list[tuple[str, Path,
             )
         elif line["type"] == _SILENT:
             silent.append(path)
+        elif line["type"] in ("assertion_error", "value_error"):
+            raise RuntimeError(f"the check of {place(path)} failed itself") from line["ctx"]["error"]
         else:
             others.append((line["type"], path, line["input"]))
     return faults, others, silent

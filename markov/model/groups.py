@@ -155,18 +155,18 @@ class Switchover(Part):
         None,
         description="Chance that a detected duty fault is covered; in a list, entry i applies when i − 1 units of the "
         "group are failed before the fault, and the last entry repeats.",
-        json_schema_extra={"unsaid": "1"},
+        json_schema_extra={"unsaid": "`1`"},
     )
     time: MaybeTime = Field(
         None,
         description="Mean time of a takeover, the place being empty meanwhile.",
-        json_schema_extra={"unsaid": "0 h"},
+        json_schema_extra={"unsaid": "`0 h`"},
     )
     stages: Count = Field(1, description="Stages of equal mean that `time` passes.")
     uncovered: Uncovered | None = Field(
         None,
         description="What an uncovered fault leads to.",
-        json_schema_extra={"unsaid": "{outcome: until_repair}"},
+        json_schema_extra={"unsaid": "`{outcome: until_repair}`"},
     )
 
 
@@ -214,7 +214,7 @@ class Group(Part):
     coverage: Coverage = Field(
         None,
         description="Short form of `switchover: {coverage: …}`; not beside `switchover`.",
-        json_schema_extra={"unsaid": "1"},
+        json_schema_extra={"unsaid": "`1`"},
     )
     switchover: Switchover | None = Field(
         None, description="How duty passes to a standby.", json_schema_extra={"unsaid": "at once, always covered"}

@@ -77,12 +77,14 @@ class Part(BaseModel):
             faults += cls._worded(others, meant)
         unread = {str(fault.path[0]) for fault in faults if fault.path} | {str(path[0]) for path in silent if path}
         unread |= {*meant.values()}
-        # A guessed key may be in the way of a written one; then the unknown key is told, and that is enough.
-        told = cls._key_faults({*map(str, data), *unread})
-        faults += [fault for fault in told if not fault.path or fault.path[0] in data]
+        # What is wrong only with, or only without, a guessed key is no fault beside that of the unknown key itself.
+        written = {*map(str, data)}
+        with_guesses = set(cls._key_faults(written | unread))
+        told = [fault for fault in cls._key_faults(written) if fault in with_guesses]
+        faults += told
         if unread and cls._faults is not Part._faults:
             value = cls._what_is_left(data, handler, unread)
-        if value is not None:
+        if value is not None and not told:
             faults += value._faults(unread)
         raise_all(faults, silent)
         return value

@@ -50,6 +50,8 @@ def read_content(data: object, kind: type[Content]) -> Reading:
         return Reading(None, (Fault((), found, "keys such as `units` and `system`", "see `markov draft`"),))
     raw = _plain(data, (), faults)
     assert isinstance(raw, dict)  # a mapping stays one
+    odd = tuple(faults)
+    odd_places = {fault.path for fault in odd}
     context, circles = _context(raw)
     faults += circles
     pruned = _Pruned(dict(raw))
@@ -67,7 +69,7 @@ def read_content(data: object, kind: type[Content]) -> Reading:
             pruned.remove([*(fault.path for fault in found_now), *silent])
     if content is not None:
         faults += check(Partial(content, raw, pruned.positions))
-    unique = tuple(dict.fromkeys(faults))
+    unique = tuple(dict.fromkeys(fault for fault in faults if fault in odd or fault.path not in odd_places))
     return Reading(None if unique else content, unique)
 
 

@@ -71,17 +71,17 @@ class Unit(Part):
         json_schema_extra={"unsaid": "none"},
     )
     start_failure: MaybeShare = Field(
-        None, description="Chance that a start attempt fails.", json_schema_extra={"unsaid": "0"}
+        None, description="Chance that a start attempt fails.", json_schema_extra={"unsaid": "`0`"}
     )
     detected: MaybeShare = Field(
         None,
         description="Share of faults that is known at once; only 100 % is built yet.",
-        json_schema_extra={"unsaid": "100 %"},
+        json_schema_extra={"unsaid": "`100 %`"},
     )
     capacity: MaybeShare = Field(
         None,
         description="Share of the group's function that one unit delivers.",
-        json_schema_extra={"unsaid": "1 ÷ `required`"},
+        json_schema_extra={"unsaid": "`1` ÷ `required`"},
     )
 
     @classmethod

@@ -6,7 +6,7 @@ import json
 from fractions import Fraction
 from typing import Any
 
-from markov.results import Result, Solution, TargetResult
+from markov.results import Check, Result, Solution, TargetResult
 
 
 def solution_json(solution: Solution) -> str:
@@ -28,6 +28,20 @@ def solution_object(solution: Solution) -> dict[str, Any]:
         "assumptions": list(solution.assumptions),
         "warnings": list(solution.warnings),
     }
+
+
+def check_json(check: Check) -> str:
+    """Return what `markov check` found as JSON text, one object, ending in a newline."""
+    found = {
+        "title": check.title,
+        "spec_sha256": check.sha256,
+        "version": check.version,
+        "states": check.states,
+        "transitions": check.transitions,
+        "assumptions": list(check.assumptions),
+        "warnings": list(check.warnings),
+    }
+    return json.dumps(found, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
 
 
 def _result(result: Result) -> dict[str, Any]:

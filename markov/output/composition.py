@@ -130,6 +130,10 @@ def _columns(
 def column_title(diagram: StateDiagram, level: int) -> str:
     """Return the heading of the column of a level, or of the several levels folded into it."""
     top = max(node.level if node.top_level is None else node.top_level for node in diagram.nodes if node.level == level)
+    if diagram.columns == "steps":
+        if top > level:
+            return f"{level} to {top} steps"
+        return {0: "start", 1: "1 step"}.get(level, f"{level} steps")
     if top > level:
         return f"{level} to {top} units failed"
     return {0: "no unit failed", 1: "1 unit failed"}.get(level, f"{level} units failed")

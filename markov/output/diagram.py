@@ -14,6 +14,7 @@ from markov.errors import UsageError
 
 Condition = Literal["up", "degraded", "down"]
 ArrowKind = Literal["fault", "restoration"]
+Columns = Literal["failed units", "steps"]
 
 _CONDITIONS: tuple[str, ...] = get_args(Condition)
 _KINDS: tuple[str, ...] = get_args(ArrowKind)
@@ -120,6 +121,8 @@ class StateDiagram:
         What a reader who does not see the picture is told; a count of states and arrows where it is left out.
     remarks
         Sentences to be printed in the picture, such as how states were folded.
+    columns
+        What the level of a state counts: failed units, or steps from the start where units are not known.
 
     Raises
     ------
@@ -135,6 +138,7 @@ class StateDiagram:
     legend: tuple[LegendEntry, ...] = ()
     alt_text: str = ""
     remarks: tuple[str, ...] = ()
+    columns: Columns = "failed units"
 
     def __post_init__(self) -> None:
         if not self.nodes:
@@ -175,7 +179,7 @@ class StateDiagram:
         word = "boxes" if any(node.holds for node in self.nodes) else "states"
         return (
             f"State diagram: {len(self.nodes)} {word} ({', '.join(counts)}), ordered from left to right by the number "
-            f"of failed units; {faults} fault arrows and {restorations} restoration arrows, each with its rate formula."
+            f"of {self.columns}; {faults} fault arrows and {restorations} restoration arrows, each with its rate formula."
         )
 
 

@@ -47,6 +47,26 @@ class Drawn:
     notes: tuple[str, ...]
 
 
+def check_target(target: Path, *, overwrite: bool) -> str:
+    """Return the ending of a file that a picture may be written to.
+
+    Raises
+    ------
+    UsageError
+        An unknown ending, a folder that is not there, a file that exists already while `overwrite` is false.
+    """
+    form = target.suffix.lower()
+    if form not in ENDINGS:
+        raise UsageError(f"{target}: ending {target.suffix!r}; expected one of {', '.join(ENDINGS)}")
+    if not target.parent.is_dir():
+        raise UsageError(f"{target}: there is no folder {target.parent}; make it first")
+    if target.is_dir():
+        raise UsageError(f"{target} is a folder; expected the name of a file")
+    if not overwrite and os.path.lexists(target):
+        raise UsageError(_exists(target))
+    return form
+
+
 def write_diagram(
     diagram: StateDiagram,
     path: str | os.PathLike[str],
@@ -79,16 +99,7 @@ def write_diagram(
         The named engine failed, the picture is too large for its format, or the file cannot be stored.
     """
     target = Path(path)
-    form = target.suffix.lower()
-    if form not in ENDINGS:
-        raise UsageError(f"{target}: ending {target.suffix!r}; expected one of {', '.join(ENDINGS)}")
-    if not target.parent.is_dir():
-        raise UsageError(f"{target}: there is no folder {target.parent}; make it first")
-    if target.is_dir():
-        raise UsageError(f"{target} is a folder; expected the name of a file")
-    if not overwrite and os.path.lexists(target):
-        raise UsageError(_exists(target))
-
+    form = check_target(target, overwrite=overwrite)
     if form == ".dot":
         _store(dot_text(diagram).encode(), target, overwrite)
         return Drawn(target, "none", ())

@@ -81,6 +81,7 @@ def fold_by_level(diagram: StateDiagram, *, band: int = 1) -> StateDiagram:
         ),
         legend=diagram.legend,
         alt_text=diagram.alt_text,
+        columns=diagram.columns,
         remarks=(*diagram.remarks, _remark(diagram, len(members), band, sum(inside.values()), len(between))),
     )
 

@@ -226,7 +226,7 @@ def _formula_lines(labels: tuple[str, ...]) -> tuple[str, ...]:
     for label in labels:
         text = legible(label) if not lines else f"+ {legible(label)}"
         if text.strip():
-            lines.extend(wrapped(text, TEXT_SIZE, _FORMULA_ROOM, break_before="+", break_late="·"))
+            lines.extend(wrapped(text, TEXT_SIZE, _FORMULA_ROOM, break_before="+=", break_late="·/"))
     return tuple(lines)
 
 

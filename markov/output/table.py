@@ -17,7 +17,7 @@ from markov.output.wording import (
     unit_words,
     value_words,
 )
-from markov.results import Result, Solution, TargetResult
+from markov.results import Check, Result, Solution, TargetResult
 
 #: System measures that the table always holds; the JSON holds every measure.
 _ALWAYS = {
@@ -66,6 +66,18 @@ def print_solution(solution: Solution, console: Console) -> None:
     _list(console, "Choices left unsaid", solution.assumptions)
     _list(console, "Warnings", solution.warnings)
     _list(console, "Cautions", CAUTIONS)
+
+
+def print_check(check: Check, console: Console) -> None:
+    """Print what `markov check` found on a console."""
+    console.print(Text(check.title or check.source_name, style="bold"))
+    console.print(
+        f"{check.states:,} states, {check.transitions:,} transitions; spec {check.sha256[:12]}; markov {check.version}",
+        style="dim",
+    )
+    console.print("The spec is in order; nothing was solved.")
+    _list(console, "Choices left unsaid", check.assumptions)
+    _list(console, "Warnings", check.warnings)
 
 
 def solution_text(solution: Solution, width: int = 110) -> str:

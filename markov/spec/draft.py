@@ -6,7 +6,7 @@ _DRAFT = """\
 # A first spec: replace the names and the numbers with those of your plant, and try
 #     markov check THIS_FILE      what is wrong, what is unsaid
 #     markov solve THIS_FILE      the measures, and the verdict on each target
-#     markov draw THIS_FILE -o states.svg
+#     markov draw THIS_FILE states.svg
 # specs/README.md lists every key.  All values below are invented.
 
 title: Greenhouse night heating

@@ -131,3 +131,13 @@ def _left_out(field: FieldInfo) -> str:
     if isinstance(field.default, bool):
         return "`true`" if field.default else "`false`"
     return f"`{field.default}`"
+
+
+def filled(page: str) -> str:
+    """Return the reference page with its tables as they should be between the marks of the page."""
+    for name, table in (("keys", key_tables()), ("measures", measure_table())):
+        start = page.index(f"<!-- {name}:")
+        begin = page.index("-->", start) + len("-->\n")
+        end = page.index(f"<!-- end of {name} -->")
+        page = f"{page[:begin]}\n{table}\n{page[end:]}"
+    return page

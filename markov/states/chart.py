@@ -97,9 +97,7 @@ class _Raw:
 Move = Callable[[Digits], tuple[NDArray[np.bool_], Digits]]
 
 
-def build_chart(
-    layout: Layout, kinds: ArrowKinds, start: Digits, local_crews: frozenset[int] = frozenset()
-) -> Chart:
+def build_chart(layout: Layout, kinds: ArrowKinds, start: Digits, local_crews: frozenset[int] = frozenset()) -> Chart:
     """Explore one island from its initial state.
 
     Parameters
@@ -166,9 +164,7 @@ def _apply(
         if not len(result):
             continue
         kind = kinds.intern(
-            ArrowKind(
-                _told(result.story), result.rate, tuple(sorted(result.starts)), result.repaired, layout.node.name
-            )
+            ArrowKind(_told(result.story), result.rate, tuple(sorted(result.starts)), result.repaired, layout.node.name)
         )
         store.source.append(result.origin)
         store.key.append(known.keys_of(result.x))
@@ -266,7 +262,9 @@ def _finished(
             crew_driven[event.crew] = _table([store], kinds, known, size)
         else:
             by_mode[event.mode].append(store)
-    spontaneous: dict[Mode, Table] = {mode: _table(stores, kinds, known, size) for mode, stores in by_mode.items() if stores}
+    spontaneous: dict[Mode, Table] = {
+        mode: _table(stores, kinds, known, size) for mode, stores in by_mode.items() if stores
+    }
     takes: dict[tuple[int, int], Index] = {}
     preempts: dict[tuple[int, int], Index] = {}
     for (what, slot, stage), found in moved.items():

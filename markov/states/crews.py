@@ -179,7 +179,7 @@ class CrewDesk:
             row = slot.fresh
         else:
             row = slot.held[stage]
-        return chart.digits[row].astype(np.int32)
+        return np.asarray(chart.digits[row], np.int32)
 
 
 def _only(share: Share, condition: NDArray[np.bool_]) -> Share:

@@ -176,9 +176,7 @@ def _waiting(path: Path, entry: Entry, x: Digits) -> NDArray[np.int16]:
 
 
 def _lost_start(dice: Dice, node: Node, slot: Slot, stage: int, branch: Branch) -> list[Branch]:
-    return [
-        done for fallen in idle_fault(slot, branch, stage=stage) for done in start_lost(dice, node, fallen)
-    ]
+    return [done for fallen in idle_fault(slot, branch, stage=stage) for done in start_lost(dice, node, fallen)]
 
 
 # --- repairs ---------------------------------------------------------------------------------------------------------
@@ -263,7 +261,7 @@ def _train_on_duty(step: Apply, train: Train, branch: Branch) -> list[Branch]:
     return done
 
 
-# --- small steps -------------------------------------------------------------------------------------------------------
+# --- small steps ---------------------------------------------------------------------------------------------------
 
 
 def _upward(dice: Dice, path: Path, apply: Apply) -> Apply:
@@ -278,7 +276,7 @@ def _upward(dice: Dice, path: Path, apply: Apply) -> Apply:
 
 
 def _row(row: int, x: Digits) -> NDArray[np.int16]:
-    return x[row]
+    return np.asarray(x[row])
 
 
 def _times(condition: Callable[[Digits], NDArray[np.bool_]], count: Exposed, x: Digits) -> NDArray[np.int16]:

@@ -10,6 +10,7 @@ import numpy as np
 
 from markov.errors import IllPosed
 from markov.model import Model
+from markov.quantities import Quantity
 from markov.rates import Factor, Rate
 from markov.states.arrows import ArrowKind, ArrowKinds
 from markov.states.space import Arrows, Mask, Values, no_such_state
@@ -66,6 +67,16 @@ class ExplicitSpace:
             raise no_such_state(name) from None
 
 
+def _symbol(given: Quantity, *, of_a_time: bool) -> str:
+    """Return a rate as the formula prints it: as written, with the signs of printed formulas."""
+    if given.name:
+        return f"1/{given.name}" if of_a_time else given.name
+    text = given.text.strip()
+    for written, printed in ((" * ", "·"), ("*", "·"), (" / ", "/"), ("-", "−")):
+        text = text.replace(written, printed) if given.parameters else text
+    return f"1/({text})" if of_a_time else text
+
+
 def take(model: Model) -> ExplicitSpace:
     """Take over the states and transitions of a hand-written chain; only states that can be reached are kept or not.
 
@@ -81,8 +92,7 @@ def take(model: Model) -> ExplicitSpace:
         given = transition.rate if transition.rate is not None else transition.mean_time
         if given is None:
             raise AssertionError("a transition has a rate or a mean time")
-        text = given.text.strip()
-        symbol = (given.name or f"({text})") if transition.rate is not None else f"1/({text})"
+        symbol = _symbol(given, of_a_time=transition.rate is None)
         factor = Factor(symbol, transition.hourly, "as written", f"transitions[{position}]")
         rate = kinds.rates.intern(Rate(Fraction(1), (factor,)))
         cause = transition.cause or f"{transition.source} to {transition.target}"

@@ -58,12 +58,13 @@ class GeneratedSpace:
         island = self.plan.island(subject)
         if island is not None:
             chart = self.charts[island]
-            return chart.layout.node.delivers(chart.digits)[self.columns[island]]
+            return np.asarray(chart.layout.node.delivers(chart.digits)[self.columns[island]])
         for number, chart in enumerate(self.charts):
             for path in chart.layout.groups[1:]:
                 train = path[-1]
                 if isinstance(train, Train) and train.unit == subject:
-                    return np.asarray(train.good(chart.digits) > 0)[self.columns[number]]
+                    good = train.good(chart.digits)[self.columns[number]]
+                    return np.asarray(good > 0)
         places = self.plan.places_of(subject)
         items = sum(self.charts[island].layout.slots[number].count for island, number in places)
         if items > 1:
@@ -71,7 +72,7 @@ class GeneratedSpace:
                 f"{subject} stands for {items} items, which are not up or down as one; ask for a group, "
                 "or for mean_units_failed"
             )
-        return self.failed(subject) == 0
+        return np.asarray(self.failed(subject) == 0)
 
     def failed(self, subject: str | None) -> Values:
         """Failed items of the system, a group or a kind, shape (n,)."""
@@ -80,6 +81,17 @@ class GeneratedSpace:
             for slot in chart.layout.slots:
                 if self._belongs(subject, chart.layout.node.name, slot):
                     count += slot.failed(chart.digits)[self.columns[island]]
+        return count
+
+    @cached_property
+    def failed_items(self) -> Values:
+        """Failed items of the whole chain, those outside the system included, shape (n,)."""
+        count = np.zeros(self.size)
+        for island, chart in enumerate(self.charts):
+            failed = np.zeros(chart.size)
+            for slot in chart.layout.slots:
+                failed += slot.failed(chart.digits)
+            count += failed[self.columns[island]]
         return count
 
     def _belongs(self, subject: str | None, island: str, slot: Slot) -> bool:
@@ -186,9 +198,7 @@ class GeneratedSpace:
         for island, chart in enumerate(self.charts):
             local = int(self.columns[island, state])
             column = [int(value) for value in chart.digits[:, local]]
-            text = island_label(
-                chart.layout, column, _ordinary(chart.layout), alone=len(self.charts) == 1
-            )
+            text = island_label(chart.layout, column, _ordinary(chart.layout), alone=len(self.charts) == 1)
             parts.append((chart.layout.node.name, text))
         return join_labels(parts, self._ambiguous)
 
@@ -197,9 +207,9 @@ class GeneratedSpace:
         return {self.label(state): state for state in range(self.size)}
 
     def find(self, name: str) -> int:
-        """Number of the state of that name, or of that number as the diagram prints it (S0, S1 …)."""
-        if name.startswith("S") and name[1:].isdigit() and int(name[1:]) < self.size:
-            return int(name[1:])
+        """Number of the state of that name, or of the number that the diagram prints in its box."""
+        if name.isdecimal() and int(name) < self.size:
+            return int(name)
         try:
             return self._numbers[name]
         except KeyError:

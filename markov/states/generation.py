@@ -107,8 +107,7 @@ def explore(
     first = np.array([[chart.start] for chart in charts], np.int32)
     shares = desk.assign(first)
     start = tuple(
-        (int(numbering.number(packing.pack(share.columns))[0]), int(share.weight[0]), share.choices)
-        for share in shares
+        (int(numbering.number(packing.pack(share.columns))[0]), int(share.weight[0]), share.choices) for share in shares
     )
     source: list[NDArray[np.int32]] = []
     target: list[NDArray[np.int32]] = []
@@ -174,9 +173,7 @@ def _chunk(
                 yield _Found(found.row, found.key, found.kind, found.multiple * served[found.row])
 
 
-def _expand(
-    table: Table, local: NDArray[np.int32], keys: Keys, stride: int, rows: NDArray[np.int64] | None
-) -> _Found:
+def _expand(table: Table, local: NDArray[np.int32], keys: Keys, stride: int, rows: NDArray[np.int64] | None) -> _Found:
     """Look up the transitions of one island for the given rows of a chunk (all rows where `rows` is None)."""
     here = local if rows is None else local[rows]
     begin = table.first[here]

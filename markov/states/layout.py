@@ -91,7 +91,8 @@ class Slot:
 
     def good(self, x: Digits) -> Digits:
         """Count items that are not failed, shape (m,)."""
-        return (self.count - self.failed(x)).astype(np.int16)
+        good: Digits = np.subtract(self.count, self.failed(x), dtype=np.int16)
+        return good
 
     def starting(self, x: Digits) -> Digits:
         """Count items whose switchover is under way, shape (m,)."""
@@ -99,7 +100,8 @@ class Slot:
 
     def waiting(self, x: Digits) -> Digits:
         """Count good items that neither carry duty nor are being started, shape (m,); standby groups only."""
-        return (self.good(x) - x[self.duty] - self.starting(x)).astype(np.int16)
+        waiting: Digits = np.subtract(self.good(x), x[self.duty] + self.starting(x), dtype=np.int16)
+        return waiting
 
     def calling(self, x: Digits) -> Digits:
         """Count items that wait for a crew or have one, shape (m,)."""
@@ -131,7 +133,7 @@ class Train:
         """Tell where the train's own criterion holds: carried out on duty, possible while it waits; shape (m,)."""
         node = self.node
         able = (node.good(x) >= node.required) & ~node.in_outage(x) & ~node.switching_now(x)
-        return np.where(x[self.duty] > 0, node.delivers(x), able).astype(np.int16)
+        return np.asarray(np.where(x[self.duty] > 0, node.delivers(x), able), np.int16)
 
     def failed(self, x: Digits) -> Digits:
         """Tell where the criterion is lost, shape (m,)."""
@@ -143,7 +145,8 @@ class Train:
 
     def waiting(self, x: Digits) -> Digits:
         """Tell where the train is good, off duty and not being switched in, shape (m,)."""
-        return (self.good(x) * (x[self.duty] == 0) * (self.starting(x) == 0)).astype(np.int16)
+        idle = (x[self.duty] == 0) & (self.starting(x) == 0)
+        return np.where(idle, self.good(x), 0).astype(np.int16)
 
 
 Entry = Slot | Train
@@ -199,7 +202,7 @@ class Node:
         """Tell in which states an uncovered outage lasts, shape (m,)."""
         if self.outage < 0:
             return np.zeros(x.shape[1], np.bool_)
-        return x[self.outage] > 0
+        return np.asarray(x[self.outage] > 0)
 
     def switching_now(self, x: Digits) -> NDArray[np.bool_]:
         """Tell in which states an active group waits for a switchover, shape (m,)."""
@@ -311,10 +314,7 @@ def total(x: Digits, rows: tuple[int, ...]) -> Digits:
     """Sum some rows, shape (m,)."""
     if not rows:
         return np.zeros(x.shape[1], np.int16)
-    if len(rows) == 1:
-        return x[rows[0]]
-    result: Digits = x[list(rows)].sum(axis=0, dtype=np.int16)
-    return result
+    return np.asarray(x[rows[0]] if len(rows) == 1 else x[list(rows)].sum(axis=0, dtype=np.int16))
 
 
 def _sum(parts: list[Digits], x: Digits) -> Digits:

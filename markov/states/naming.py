@@ -36,7 +36,11 @@ def _group_words(path: Path, column: Sequence[int], *, several: bool) -> list[st
     if isinstance(train, Train):
         if column[train.duty]:
             told.append("on duty")
-        told += [what if number == 1 else f"{number} {what}" for number, what in _staged(train.start, column, "starting") if number]
+        told += [
+            what if number == 1 else f"{number} {what}"
+            for number, what in _staged(train.start, column, "starting")
+            if number
+        ]
     if node.outage >= 0 and column[node.outage]:
         told.append("lost" if node.outcome == "lost" else "uncovered")
     switching = [column[row] for row in node.switching]
@@ -76,4 +80,3 @@ def join_labels(parts: Sequence[tuple[str, str]], ambiguous: frozenset[str]) -> 
     """Join the labels of several islands; an island with an ambiguous label is named before it."""
     told = [f"{island}[{text}]" if island in ambiguous else text for island, text in parts if text]
     return "; ".join(told) if told else ALL_GOOD
-

@@ -120,5 +120,5 @@ def drop_idle_outage(node: Node, x: Digits) -> None:
         if node.outage >= 0 and node.outcome in ("until_repair", "manual_takeover", "restart_without_failed"):
             x[node.outage][short] = 0
     elif node.outage >= 0 and node.outcome in ("manual_takeover", "restart_without_failed"):
-        if not (node.start_again and node.takeover_rate):  # else a repaired item is started in another way
-            x[node.outage][node.waiting(x) + node.starting(x) == 0] = 0
+        started_in_another_way = node.start_again and node.takeover_rate is not None
+        x[node.outage][(node.waiting(x) + node.starting(x) == 0) & (not started_in_another_way)] = 0

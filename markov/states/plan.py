@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
-from markov.model import Group, Member, Model, Unit, names
+from markov.model import Group, Model, Unit, names
 from markov.quantities import Quantity
 from markov.rates import Factor
 from markov.states.layout import Entry, Layout, Node, RowCounter, Slot, Train
@@ -155,7 +155,9 @@ def _group(model: Model, name: str, while_down: str, contended: set[str], counte
     group = model.groups.get(name)
     node = _node(name, group, while_down)
     entries: list[Entry] = []
-    for rank, member in enumerate((Member(name=name),) if group is None else group.members):
+    if group is None:
+        entries.append(_slot(model, node, name, 0, 1, contended, counter))
+    for rank, member in enumerate(() if group is None else group.members):
         if member.is_group:
             inside = _group(model, member.name, _while_down(model, member.name, while_down), contended, counter)
             label = f"train {member.name}"
@@ -230,9 +232,7 @@ def _while_down(model: Model, name: str, around: str | None) -> str:
     return model.while_down
 
 
-def _slot(
-    model: Model, node: Node, unit: str, rank: int, count: int, contended: set[str], counter: RowCounter
-) -> Slot:
+def _slot(model: Model, node: Node, unit: str, rank: int, count: int, contended: set[str], counter: RowCounter) -> Slot:
     kind = model.units[unit]
     where = f"units.{unit}"
     pool = next((crew for name, crew in model.crews.items() if unit in crew.repairs and name in contended), None)

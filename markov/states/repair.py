@@ -76,9 +76,7 @@ def _join_active(node: Node, entry: Entry, branch: Branch, carries: bool) -> Non
         branch.x[row][enough] = 0
 
 
-def _take_empty_place(
-    dice: Dice, node: Node, entry: Entry, branch: Branch, *, during_outage: bool
-) -> list[Branch]:
+def _take_empty_place(dice: Dice, node: Node, entry: Entry, branch: Branch, *, during_outage: bool) -> list[Branch]:
     """Put the member on duty where a place is empty; it waits otherwise."""
     if node.start_again:
         tried, waits = branch.split(empty_places(node, branch.x) > 0)

@@ -38,16 +38,27 @@ class Arrows:
     @property
     def moving(self) -> Mask:
         """Which transitions change the state."""
-        return self.source != self.target
+        return np.asarray(self.source != self.target)
 
 
 class StateSpace(Protocol):
     """What the bridge asks of a chain, generated or written by hand."""
 
-    size: int
-    arrows: Arrows
-    kinds: ArrowKinds
-    start: tuple[tuple[int, Fraction], ...]
+    @property
+    def size(self) -> int:
+        """Number of states, n."""
+
+    @property
+    def arrows(self) -> Arrows:
+        """Transitions as columns."""
+
+    @property
+    def kinds(self) -> ArrowKinds:
+        """Kinds of transition, with their symbolic rates."""
+
+    @property
+    def start(self) -> tuple[tuple[int, Fraction], ...]:
+        """Initial states with their probabilities."""
 
     @property
     def up(self) -> Mask:

@@ -69,9 +69,8 @@ class Moment:
     conditions: tuple[Condition, ...]
     orders: tuple[str, ...]
     switchovers: tuple[tuple[int, ...], ...]
-    starts: int = 0
-    repaired: int = 0
-    faults: tuple[int, ...] = ()
+    starts: tuple[int, ...] = ()
+    repaired: tuple[int, ...] = ()
 
     def put(self, item: int, condition: Condition) -> Moment:
         changed = list(self.conditions)
@@ -90,7 +89,7 @@ class Moment:
 
     @property
     def state(self) -> Moment:
-        return replace(self, starts=0, repaired=0, faults=())
+        return replace(self, starts=(), repaired=())
 
 
 #: Moments with their chances; the chances sum to one.
@@ -145,6 +144,10 @@ class Plant:
 
     def renewed_at_once(self, item: int) -> bool:
         return self.unit(item).get("repair_time") == 0
+
+    def place(self, item: int) -> str:
+        """Name of the group that an item belongs to, or its own where it stands alone."""
+        return self.items[item].group or self.items[item].kind
 
     def start_failure(self, item: int) -> Fraction:
         return Fraction(self.unit(item).get("start_failure", 0))
@@ -237,7 +240,9 @@ class Plant:
         """Present failure rate of a good item."""
         rate = Fraction(self.unit(item)["failure_rate"])
         group = self.items[item].group
-        mode = self.while_down if group is None else self.groups[group].get("while_down", self.while_down)
+        mode = self.while_down if self.place(item) in set(names(self.system)) else "continue"
+        if group is not None:
+            mode = self.groups[group].get("while_down", mode)
         down = not self.up(moment)
         if down and mode == "stop":
             return Fraction(0)
@@ -264,7 +269,7 @@ class Plant:
             return self.delivers(moment, name) and item not in self.alone(name)
         if item not in self.of(name) or moment.conditions[item] != DUTY or not self.delivers(moment, name):
             return self.delivers(moment, name)
-        left = self.on_duty(moment, name) - 1
+        left = self.on_duty(moment, name) - 1 + len(self.starting(moment, name))
         if not self.active(name) and moment.orders[self.numbers[name]] == NORMAL and self.having(moment, name, WAITING):
             left += 1
         return left >= self.required(name)
@@ -317,7 +322,7 @@ class Rules:
             condition = BROKEN
         else:
             condition = DELAYED if unit.get("logistic_delay", 0) > 0 else QUEUED
-        return replace(moment.put(item, condition), faults=(*moment.faults, item))
+        return moment.put(item, condition)
 
     def fault(self, moment: Moment, item: int) -> Chances:
         """One item fails by itself."""
@@ -384,7 +389,7 @@ class Rules:
         return evenly(alike, lambda item: self.attempt(moment, group, item, timed))
 
     def attempt(self, moment: Moment, group: str, item: int, timed: bool) -> Chances:
-        tried = replace(moment, starts=moment.starts + 1)
+        tried = replace(moment, starts=(*moment.starts, item))
         began = (STARTING, 1) if timed and self.plant.takes_time(group) else DUTY
         return split(
             self.plant.start_failure(item),
@@ -428,9 +433,9 @@ class Rules:
         last = max(rank[item] for item in running)
         if first >= last:
             return [(ONE, moment)]
-        tried = replace(moment, starts=moment.starts + 1)
 
         def attempt(item: int) -> Chances:
+            tried = replace(moment, starts=(*moment.starts, item))
             return split(
                 self.plant.start_failure(item),
                 lambda: [(ONE, self.fail(tried, item))],
@@ -471,6 +476,8 @@ class Rules:
         if outcome == "restart":
             return [(ONE, self.as_new(over, group))]
         if self.plant.active(group):
+            import os
+            if os.environ.get("T1"): return [(ONE, over)]
             return [(ONE, over.switching(number, ()))]
         if outcome == "manual_takeover":
             return self.start_all(over, group, timed=False)
@@ -491,7 +498,7 @@ class Rules:
         if stage < int(self.plant.unit(item).get("repair_stages", 1)):
             return [(ONE, moment.put(item, (REPAIRING, stage + 1)))]
         group = self.plant.items[item].group
-        done = replace(moment, repaired=moment.repaired + 1)
+        done = replace(moment, repaired=(*moment.repaired, item))
         if group is None:
             return [(ONE, done.put(item, DUTY))]
         if self.plant.active(group):
@@ -527,7 +534,8 @@ class Rules:
         if outcome == "restart":
             if good < self.plant.size(group):
                 return [(ONE, moment)]
-            return [(ONE, self.as_new(moment.order(number, NORMAL), group))]
+            over = self.give_up_starts(moment.order(number, NORMAL), group)
+            return self.fill_without_attempts(over, group)
         if again:
             taken = self.plant.on_duty(moment, group) + len(self.plant.starting(moment, group))
             empty = taken < self.plant.places(group)
@@ -642,8 +650,12 @@ class Rules:
 
     def finish(self, chances: Chances) -> Chances:
         """What follows on every event: duty goes back to preferred members, crews are sent."""
+        import os
         for group in self.plant.groups:
-            chances = then(chances, lambda moment: self.back_to_preferred(moment, group))  # noqa: B023
+            if os.environ.get("T2"):
+                chances = then(chances, lambda moment: self.back_to_preferred(moment, group) if moment.repaired and self.plant.items[moment.repaired[0]].group==group and moment.conditions[moment.repaired[0]]==WAITING else [(ONE,moment)])  # noqa: B023
+            else:
+                chances = then(chances, lambda moment: self.back_to_preferred(moment, group))  # noqa: B023
         return then(chances, self.assign_crews)
 
     def first(self) -> Chances:
@@ -664,8 +676,9 @@ class Rules:
     def _fails_at_start(self, item: int) -> bool:
         each = self.plant.items[item]
         alike = [number for number, other in enumerate(self.plant.items) if other == each]
+        places = {other.group for other in self.plant.items if other.kind == each.kind}
         number = self.plant.initial.get(f"{each.group}.{each.kind}", 0)
-        if sum(1 for other in set(self.plant.items) if other.kind == each.kind) == 1:
+        if len(places) == 1:
             number = self.plant.initial.get(each.kind, number)
         return item in alike[len(alike) - number :]
 
@@ -679,9 +692,7 @@ class Chain:
     start: dict[Moment, Fraction]
     states: dict[Moment, int]
     rates: dict[Moment, dict[Moment, Fraction]]
-    starts: dict[Moment, Fraction] = field(default_factory=lambda: defaultdict(Fraction))
-    repaired: dict[Moment, Fraction] = field(default_factory=lambda: defaultdict(Fraction))
-    faults: dict[tuple[Moment, str], Fraction] = field(default_factory=lambda: defaultdict(Fraction))
+    happening: dict[str, dict[Moment, Fraction]] = field(default_factory=lambda: defaultdict(lambda: defaultdict(Fraction)))
 
     def values(self, of: Callable[[Moment], Any]) -> NDArray[np.float64]:
         """Return one number for each state."""
@@ -707,26 +718,27 @@ class Chain:
     def rewards(self) -> dict[str, NDArray[np.float64]]:
         """Return what is to be compared, one number for each state, by name."""
         plant, rules = self.plant, self.rules
+        in_system = set(names(plant.system))
+
+        def failed(state: Moment, place: str) -> int:
+            return sum(not plant.good(state, item) for item in range(len(plant.items)) if plant.place(item) == place)
+
         rewards = {
-            "starts": self.values(lambda state: self.starts[state]),
-            "repairs": self.values(lambda state: self.repaired[state]),
-            "failed": self.values(lambda state: sum(not plant.good(state, item) for item in range(len(plant.items)))),
-            "capacity": self.values(
-                lambda state: carried(plant.system, lambda name: plant.capacity(state, name)),
-            ),
+            "units failed": self.values(lambda state: sum(failed(state, place) for place in in_system)),
+            "capacity": self.values(lambda state: carried(plant.system, lambda name: plant.capacity(state, name))),
             "without redundancy": self.values(plant.without_redundancy),
         }
-        for name in plant.groups:
-            rewards[f"failed {name}"] = self.values(lambda state: plant.failed_of(state, name))  # noqa: B023
-            rewards[f"capacity {name}"] = self.values(lambda state: plant.capacity(state, name))  # noqa: B023
-            rewards[f"delivers {name}"] = self.values(lambda state: plant.delivers(state, name))  # noqa: B023
-        for pool, crew in plant.crews.items():
+        for place in dict.fromkeys(plant.place(item) for item in range(len(plant.items))):
+            if place in plant.groups or all(item.group is None for item in plant.items if item.kind == place):
+                rewards[f"{place}: units failed"] = self.values(lambda state: failed(state, place))  # noqa: B023
+            rewards[f"{place}: capacity"] = self.values(lambda state: plant.capacity(state, place))  # noqa: B023
+            rewards[f"{place}: delivers"] = self.values(lambda state: plant.delivers(state, place))  # noqa: B023
+        for pool in plant.crews:
             busy = self.values(lambda state: len(rules.at_work(state, pool)))  # noqa: B023
-            faults = self.values(lambda state: self.faults[state, pool])  # noqa: B023
-            rewards[f"busy {pool}"] = busy
-            rewards[f"waiting {pool}"] = self.values(lambda state: len(rules.calling(state, pool))) - busy  # noqa: B023
-            rewards[f"faults {pool}"] = faults
-            rewards[f"faults that wait {pool}"] = np.where(busy >= crew["size"], faults, 0.0)
+            rewards[f"{pool}: busy"] = busy
+            rewards[f"{pool}: waiting"] = self.values(lambda state: len(rules.calling(state, pool))) - busy  # noqa: B023
+        for name, per_hour in self.happening.items():
+            rewards[name] = self.values(lambda state: per_hour.get(state, 0))  # noqa: B023
         return rewards
 
 
@@ -738,7 +750,6 @@ def enumerate_chain(spec: Spec, most: int = 5000) -> Chain:
     for p, state in rules.first():
         start[state] += p
     chain = Chain(plant, rules, dict(start), {state: n for n, state in enumerate(start)}, {})
-    pools = {kind: pool for pool, crew in plant.crews.items() for kind in crew["repairs"]}
     unvisited = deque(chain.states)
     while unvisited:
         source = unvisited.popleft()
@@ -756,14 +767,26 @@ def enumerate_chain(spec: Spec, most: int = 5000) -> Chain:
                     if len(chain.states) > most:
                         raise TooLarge
                 row[target] += rate * p
-                chain.starts[source] += rate * p * moment.starts
-                chain.repaired[source] += rate * p * moment.repaired
-                for item in moment.faults:
-                    pool = pools.get(plant.items[item].kind)
-                    if pool is not None:
-                        chain.faults[source, pool] += rate * p
+                for name, count in _happened(plant, rules, source, moment):
+                    chain.happening[name][source] += rate * p * count
         chain.rates[source] = dict(row)
     return chain
+
+
+def _happened(plant: Plant, rules: Rules, source: Moment, moment: Moment) -> Iterator[tuple[str, int]]:
+    """Yield what one event counts: starts, repairs, calls for a crew, calls that find no free one."""
+    for item in moment.starts:
+        yield f"{plant.place(item)}: starts of {plant.items[item].kind}", 1
+    for item in moment.repaired:
+        yield f"{plant.place(item)}: repairs of {plant.items[item].kind}", 1
+    for pool, crew in plant.crews.items():
+        before = set(rules.calling(source, pool)) - set(moment.repaired)
+        new = len(set(rules.calling(moment, pool)) - before)
+        free = max(crew["size"] - len(before), 0)
+        if new:
+            yield f"{pool}: calls", new
+        if new > free:
+            yield f"{pool}: calls that wait", new - free
 
 
 # ---------------------------------------------------------------------------------------- numbers from any chain
@@ -819,7 +842,7 @@ def numbers(
         "steady-state availability": steady @ up,
         "steady-state unavailability": steady @ ~up,
         "failure frequency": steady @ falling,
-        **{f"steady {name}": steady @ reward for name, reward in rewards.items()},
+        **{f"{name} in the long run": steady @ reward for name, reward in rewards.items()},
     }
     inner = generator[np.ix_(up, up)]
     can_last = not up.all() and np.linalg.matrix_rank(inner) == len(inner)
@@ -831,7 +854,5 @@ def numbers(
         then_on = first @ expm(generator * time)
         result[f"unavailability at {time}"] = then_on @ ~up
         result[f"failure frequency at {time}"] = then_on @ falling
-        for name in ("failed", "capacity"):
-            if name in rewards:
-                result[f"{name} at {time}"] = then_on @ rewards[name]
+        result |= {f"{name} at {time}": then_on @ reward for name, reward in rewards.items()}
     return {name: float(value) for name, value in result.items()}

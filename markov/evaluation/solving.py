@@ -3,21 +3,20 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 from fractions import Fraction
 
 from markov._version import __version__
 from markov.chain import Enclosure
 from markov.errors import IllPosed, NotReached
-from markov.evaluation import Answers
-from markov.gains import gain
+from markov.evaluation.answers import Answers
+from markov.evaluation.gains import gain
+from markov.evaluation.questions import Question, all_questions, question_of
+from markov.evaluation.unsaid import unsaid_choices
+from markov.evaluation.verdicts import judge
 from markov.model import Model
-from markov.questions import Question, all_questions, question_of
-from markov.results import Result, Solution
+from markov.results import Check, Result, Solution
 from markov.states import GeneratedSpace, StateSpace, generate, take
 from markov.states.generation import STATE_LIMIT
-from markov.unsaid import unsaid_choices
-from markov.verdicts import judge
 
 #: Called with what is being done, for a progress line.
 Progress = Callable[[str], None]
@@ -137,18 +136,6 @@ def _can_fail(answers: Answers, of: str | None) -> bool:
         return True
 
 
-@dataclass(frozen=True)
-class Check:
-    """What `markov check` finds without solving anything."""
-
-    title: str
-    source_name: str
-    states: int
-    transitions: int
-    assumptions: tuple[str, ...]
-    warnings: tuple[str, ...]
-
-
 def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
     """Return the size of a model's chain, its unsaid choices and its warnings; solve nothing."""
     space = build_space(model, limit=limit)
@@ -156,6 +143,8 @@ def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
     return Check(
         model.title or "",
         model.source_name,
+        model.sha256,
+        __version__,
         space.size,
         Answers(space, model.year_hours).arrow_count,
         unsaid_choices(model, plan),

@@ -60,9 +60,7 @@ def _held(success: Success, parts: dict[str, Share], repeated: list[str]) -> Sha
     share = parts[name]
     with_it = _held(success, {**parts, name: _WORKS}, rest)
     without = _held(success, {**parts, name: _FAILED}, rest)
-    return Share(
-        share.up * with_it.up + share.down * without.up, share.up * with_it.down + share.down * without.down
-    )
+    return Share(share.up * with_it.up + share.down * without.up, share.up * with_it.down + share.down * without.down)
 
 
 def _tree(success: Success, parts: Mapping[str, Share]) -> Share:
@@ -89,5 +87,3 @@ def _tree(success: Success, parts: Mapping[str, Share]) -> Share:
         else:
             down = down + each
     return Share(up.capped(), down.capped())
-
-

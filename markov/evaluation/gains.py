@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from fractions import Fraction
 
 from markov.chain import Enclosure
-from markov.combining import Share, combine
 from markov.errors import IllPosed
-from markov.evaluation import Answers
+from markov.evaluation.answers import Answers
+from markov.evaluation.combining import Share, combine
+from markov.evaluation.questions import Question
 from markov.model import Group, Member, Model, Named
-from markov.questions import Question
 from markov.states import generate
 
 Rival = Callable[[Model, Fraction | None], Enclosure]
@@ -29,8 +30,10 @@ def gain(model: Model, answers: Answers, question: Question) -> Enclosure:
     system = answers.answer(_badness(question.at_hours))
     if not answers.can_fail(None) or system.upper == 0:
         raise IllPosed("no down state can be reached, so there is nothing to compare with")
-    rival = plain_arrangement if question.measure == "gain_over_single_unit" else independent_blocks
-    return rival(model, question.at_hours) / system
+    single = question.measure == "gain_over_single_unit"
+    rival = plain_arrangement if single else independent_blocks
+    method = "ratio of two chains" if single else "groups solved alone, combined through the structure"
+    return replace(rival(model, question.at_hours) / system, method=f"{method}; {system.method}")
 
 
 def plain_arrangement(model: Model, at: Fraction | None) -> Enclosure:
@@ -61,9 +64,7 @@ def independent_blocks(model: Model, at: Fraction | None) -> Enclosure:
         space = generate(alone)
         answers = Answers(space, model.year_hours, () if at is None else (at,))
         up = "steady_state_availability" if at is None else "reliability"
-        parts[name] = Share(
-            answers.answer(Question(up, at_hours=at)), answers.answer(_badness(at))
-        )
+        parts[name] = Share(answers.answer(Question(up, at_hours=at)), answers.answer(_badness(at)))
     return combine(model.system, parts).down
 
 

@@ -80,7 +80,7 @@ def _holds(direction: str, value: float, limit: Fraction) -> bool:
 def _margin(target: Target, value: float) -> str:
     """Return how far the value is from the limit, as a share of what counts."""
     limit = float(target.limit)
-    if target.measure in _CERTAIN and 0.5 < limit < 1:
+    if target.measure in {*_CERTAIN, "mean_capacity"} and 0.5 < limit < 1:
         ratio = (1 - value) / (1 - limit)
         return f"{_ratio(ratio)} of the allowed shortfall from 1"
     if limit == 0:

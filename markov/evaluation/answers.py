@@ -27,7 +27,7 @@ from markov.chain import (
     transient,
 )
 from markov.errors import IllPosed
-from markov.questions import Question
+from markov.evaluation.questions import Question
 from markov.rates import split_exact
 from markov.states import GeneratedSpace, Pool, StateSpace
 
@@ -72,9 +72,7 @@ class Answers:
         moving = self.space.arrows.moving
         high, low = self._arrow_rates
         arrows = self.space.arrows
-        return aggregate(
-            self.space.size, arrows.source[moving], arrows.target[moving], high[moving], low[moving]
-        )
+        return aggregate(self.space.size, arrows.source[moving], arrows.target[moving], high[moving], low[moving])
 
     @cached_property
     def _arrow_rates(self) -> tuple[Values, Values]:
@@ -355,7 +353,7 @@ class Answers:
         return self._flow_rate(self.space.arrows.source[counting], rates)
 
     def _flow_rate(self, source: NDArray[np.int32], rates: Values) -> Enclosure:
-        weights = np.bincount(source, weights=rates, minlength=self.space.size)
+        weights = np.bincount(source, weights=rates, minlength=self.space.size).astype(np.float64)
         terms = int(np.bincount(source, minlength=1).max()) if len(source) else 0
         return self._long_run(lambda pi: pi.weighted(weights, (terms + 3) * _UNIT))
 
@@ -414,7 +412,9 @@ class Answers:
     def _pools(self, of: str | None) -> tuple[Pool, ...]:
         pools = self._plant.pools(of)
         if not pools:
-            raise IllPosed("the chain has no crew pool" if of is None else f"crew pool {of} serves nothing in the chain")
+            raise IllPosed(
+                "the chain has no crew pool" if of is None else f"crew pool {of} serves nothing in the chain"
+            )
         return pools
 
     def _time_without_redundancy(self, question: Question) -> Enclosure:

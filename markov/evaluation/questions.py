@@ -31,9 +31,7 @@ def question_of(model: Model, target: Target) -> Question:
     at = None if target.at is None else target.at.exact
     if at is None and target.asked.timing == "point" and model.mission is not None:
         at = model.mission.time.exact
-    return Question(
-        target.measure, target.of, target.state, at, None if target.for_ is None else target.for_.exact
-    )
+    return Question(target.measure, target.of, target.state, at, None if target.for_ is None else target.for_.exact)
 
 
 def all_questions(model: Model, times: Sequence[Fraction]) -> tuple[Question, ...]:
