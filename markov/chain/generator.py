@@ -104,8 +104,9 @@ class Generator:
         )
         frontier: NDArray[np.integer[Any]] = np.flatnonzero(reached)
         while frontier.size:
-            entered = np.unique(pattern[frontier].indices)
-            frontier = entered[~reached[entered]]
+            entered = np.zeros(self.n, dtype=bool)
+            entered[pattern[frontier].indices] = True
+            frontier = np.flatnonzero(entered & ~reached)
             reached[frontier] = True
         return reached
 

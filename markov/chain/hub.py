@@ -128,8 +128,9 @@ class Hub:
         frontier, depth = np.array([self.number]), 0
         while frontier.size:
             depth += 1
-            entered = np.unique(pattern[frontier].indices)
-            frontier = entered[level[entered] < 0]
+            entered = np.zeros(self.chain.n, dtype=bool)
+            entered[pattern[frontier].indices] = True
+            frontier = np.flatnonzero(entered & (level < 0))
             level[frontier] = depth
         level[level < 0] = depth
         return level[self.others]

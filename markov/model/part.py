@@ -66,7 +66,7 @@ class Part(BaseModel):
         if not isinstance(data, Mapping):
             data = cls.expand(data)
         data = dict(data)
-        meant = cls.meant_by(str(key) for key in data)
+        meant: dict[str, str] = {}
         faults: list[Fault] = []
         silent: list[Path] = []
         value = None
@@ -74,6 +74,7 @@ class Part(BaseModel):
             value = handler(data)
         except ValidationError as error:
             faults, others, silent = gathered(error)
+            meant = cls.meant_by(str(path[0]) for kind, path, _ in others if kind == "extra_forbidden" and path)
             faults += cls._worded(others, meant)
         unread = {str(fault.path[0]) for fault in faults if fault.path} | {str(path[0]) for path in silent if path}
         unread |= {*meant.values()}

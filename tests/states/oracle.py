@@ -224,7 +224,10 @@ class Plant:
         number = self.numbers[name]
         if moment.orders[number] == LOST:
             return Fraction(0)
-        if self.active(name) and (moment.orders[number] == OUT or moment.switchovers[number]):
+        import os
+        if os.environ.get("T4") and self.active(name) and len(self.good_of(moment,name))<self.required(name) and not (moment.orders[number]==OUT and self.outcome(name)=="restart"):
+            pass
+        elif self.active(name) and (moment.orders[number] == OUT or moment.switchovers[number]):
             return Fraction(0)
         usual = Fraction(1, self.required(name))
         carried = self.having(moment, name, DUTY)
@@ -336,6 +339,8 @@ class Rules:
         if before == WAITING:
             return [(ONE, after)]
         if before[0] == STARTING:  # "a unit lost meanwhile begins a new attempt with full time, without a new draw"
+            import os
+            if os.environ.get("T3") and moment.orders[self.plant.numbers[group]] != NORMAL: return [(ONE, after)]
             return self.start_one(after, group, timed=True)
         if moment.orders[self.plant.numbers[group]] != NORMAL:  # "further duty faults leave their places empty"
             return [(ONE, after)]
@@ -446,7 +451,28 @@ class Rules:
             )
 
         changed = evenly([item for item in waiting if rank[item] == first], attempt)
+        if self.once: return changed
         return then(changed, lambda after: self.back_to_preferred(after, group))
+
+    def engine_return(self, moment, group):
+        if not moment.repaired or self.plant.items[moment.repaired[0]].group != group or self.source.orders[self.plant.numbers[group]] != NORMAL:
+            return [(ONE, moment)]
+        kind = self.plant.items[moment.repaired[0]].kind
+        hidden = [i for i in self.plant.of(group) if moment.conditions[i] == WAITING and self.plant.items[i].kind != kind]
+        masked = moment
+        for i in hidden:
+            masked = masked.put(i, BROKEN)
+        self.once = True
+        out = self.back_to_preferred(masked, group)
+        self.once = False
+        res = []
+        for p, m in out:
+            for i in hidden:
+                m = m.put(i, WAITING)
+            res.append((p, m))
+        return res
+
+    once = False
 
     def switchover_step(self, moment: Moment, item: int) -> Chances:
         """A unit being switched in passes a stage."""
@@ -624,6 +650,7 @@ class Rules:
     # -- all together
 
     def events(self, moment: Moment) -> Iterator[tuple[Fraction, Chances]]:
+        self.source = moment
         """Yield every event that is possible in a state: its rate, where it leads before crews are sent."""
         for item, condition in enumerate(moment.conditions):
             unit = self.plant.unit(item)
@@ -653,7 +680,7 @@ class Rules:
         import os
         for group in self.plant.groups:
             if os.environ.get("T2"):
-                chances = then(chances, lambda moment: self.back_to_preferred(moment, group) if moment.repaired and self.plant.items[moment.repaired[0]].group==group and moment.conditions[moment.repaired[0]]==WAITING else [(ONE,moment)])  # noqa: B023
+                chances = then(chances, lambda moment: self.engine_return(moment, group))
             else:
                 chances = then(chances, lambda moment: self.back_to_preferred(moment, group))  # noqa: B023
         return then(chances, self.assign_crews)
