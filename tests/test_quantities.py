@@ -117,8 +117,30 @@ def test_plain_numbers_are_exact(text: str, value: Fraction | int) -> None:
 
 @pytest.mark.parametrize(
     "text",
-    ["010", "00.5", "1:30", "1,5", ".nan", ".inf", "-.inf", "nan", "inf", "null", "~", "true", "no", "", "  "]
-    + ["1__0", "1_", "0x10", "1e999", "1e-999", "∞", "1.2.3"],
+    [
+        "010",
+        "00.5",
+        "1:30",
+        "1,5",
+        ".nan",
+        ".inf",
+        "-.inf",
+        "nan",
+        "inf",
+        "null",
+        "~",
+        "true",
+        "no",
+        "",
+        "  ",
+        "1__0",
+        "1_",
+        "0x10",
+        "1e999",
+        "1e-999",
+        "∞",
+        "1.2.3",
+    ],
 )
 def test_number_traps_are_refused(text: str) -> None:
     assert refusal(text).fix
@@ -126,7 +148,13 @@ def test_number_traps_are_refused(text: str) -> None:
 
 @pytest.mark.parametrize(
     ("text", "fix"),
-    [("010", "write 10"), ("1,5", "write 1.5"), ("5 H", "write h"), ("5 m", "write min or month"), ("3 × 2", "write *")],
+    [
+        ("010", "write 10"),
+        ("1,5", "write 1.5"),
+        ("5 H", "write h"),
+        ("5 m", "write min or month"),
+        ("3 × 2", "write *"),
+    ],
 )
 def test_refusal_says_what_to_write(text: str, fix: str) -> None:
     assert refusal(text).fix == fix
@@ -238,13 +266,9 @@ def test_nesting_and_length_are_limited() -> None:
 
 def test_digits_cannot_explode() -> None:
     big = {"p": parse_quantity("1.00000000001")}
-    for _ in range(20):
-        try:
+    with pytest.raises(QuantityError, match="too many digits"):  # noqa: PT012
+        for _ in range(20):
             big["p"] = parse_quantity("p * p", parameters=big)
-        except QuantityError as error:
-            assert "too many digits" in error.found
-            return
-    pytest.fail("the digits grew without limit")
 
 
 def test_quantity_keeps_its_text_and_its_names() -> None:
@@ -297,9 +321,9 @@ def test_evaluation_agrees_with_reading(value: Fraction) -> None:
 @given(st.text(alphabet="0123456789.eE+-*/()% _habcyFIT,:per million\t", max_size=40) | st.text(max_size=20))
 def test_any_text_is_read_or_refused(text: str) -> None:
     try:
-        quantity = read(text)
+        assert read(text).exact >= 0
     except QuantityError as error:
-        assert error.found
-        assert error.fix
+        told = (error.found, error.expected, error.fix)
     else:
-        assert quantity.exact >= 0
+        return
+    assert all(told)

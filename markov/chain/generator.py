@@ -104,9 +104,7 @@ class Generator:
         )
         frontier: NDArray[np.integer[Any]] = np.flatnonzero(reached)
         while frontier.size:
-            entered = np.zeros(self.n, dtype=bool)
-            entered[pattern[frontier].indices] = True
-            frontier = np.flatnonzero(entered & ~reached)
+            frontier = entered_first(pattern, frontier, reached)
             reached[frontier] = True
         return reached
 
@@ -183,6 +181,17 @@ class Generator:
             Doubled(summed.high.reshape(shape), summed.low.reshape(shape)),
             (self.rate_error + total_error(longest)) * (1.0 + 1e-12),
         )
+
+
+def entered_first(pattern: csr_array, frontier: NDArray[np.integer[Any]], reached: Flags) -> NDArray[np.integer[Any]]:
+    """Return the states entered from a frontier that were not reached before."""
+    entered = pattern[frontier].indices
+    if entered.size * 16 < reached.size:
+        entered = np.unique(entered)
+        return np.asarray(entered[~reached[entered]])
+    flags = np.zeros_like(reached)
+    flags[entered] = True
+    return np.flatnonzero(flags & ~reached)
 
 
 def by_target(chain: Generator) -> NDArray[np.int64]:

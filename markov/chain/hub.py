@@ -17,7 +17,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,7 +25,7 @@ from numpy.typing import NDArray
 from markov.chain import dense
 from markov.chain.bounds import Floats
 from markov.chain.doubled import ADD, DIVIDE, MULTIPLY, Doubled, add, divide, multiply, plain, total, total_error, zeros
-from markov.chain.generator import Generator, Restriction, by_target
+from markov.chain.generator import Generator, Restriction, by_target, entered_first
 from markov.chain.mmatrix import Flow, Solver, solve_certified
 from markov.chain.sweeps import sweeps
 from markov.errors import NotReached
@@ -71,13 +71,18 @@ class Hub:
     @property
     def method(self) -> str:
         """How, for people."""
-        return f"{self._row[1].name}, certified entry by entry"
+        return f"{self.row[1].name}, certified entry by entry"
 
     @cached_property
     def inward(self) -> Doubled:
         """Rates into the hub, Doubled[n - 1], relative error that of the rates."""
         found = self._part.absorption
         return Doubled(found.high[:, 0], found.low[:, 0])
+
+    @property
+    def inward_error(self) -> float:
+        """Relative error of `inward`."""
+        return self._part.absorption_error
 
     @cached_property
     def outward(self) -> Doubled:
@@ -101,7 +106,8 @@ class Hub:
         return Flow(inner.source[order], inner.target[order], inner.rates.at(order), inner.rate_error, *self._exits)
 
     @cached_property
-    def _row(self) -> tuple[Flow, Solver]:
+    def row(self) -> tuple[Flow, Solver]:
+        """The system of times spent off the hub, with its solver."""
         flow = self._flow("row")
         return flow, self._dense or sweeps(flow, self._levels)
 
@@ -125,19 +131,18 @@ class Hub:
         level = np.full(self.chain.n, -1, dtype=np.int64)
         level[self.number] = 0
         pattern = self.chain.matrix()
-        frontier, depth = np.array([self.number]), 0
+        frontier: NDArray[np.integer[Any]] = np.array([self.number])
+        depth = 0
         while frontier.size:
             depth += 1
-            entered = np.zeros(self.chain.n, dtype=bool)
-            entered[pattern[frontier].indices] = True
-            frontier = np.flatnonzero(entered & (level < 0))
+            frontier = entered_first(pattern, frontier, level >= 0)
             level[frontier] = depth
         level[level < 0] = depth
         return level[self.others]
 
     def solve(self, side: Literal["row", "column"], b: Doubled, b_error: float) -> tuple[Doubled, float]:
         """Solve one system off the hub, certified."""
-        flow, solver = self._row if side == "row" else self._column
+        flow, solver = self.row if side == "row" else self._column
         return solve_certified(flow, b, b_error, solver)
 
     @cached_property
@@ -187,7 +192,7 @@ class Hub:
         """Return the mean time to absorption from each state, Doubled[n], with its relative error."""
         ones = plain(np.ones(self.chain.n - 1))
         before, before_error = self.solve("column", ones, 0.0)
-        back, back_error = self.solve("column", self.inward, self._part.absorption_error)
+        back, back_error = self.solve("column", self.inward, self.inward_error)
         gone, gone_error = self.solve("column", self.loss.at(self.others), self.loss_error)
         step = MULTIPLY + total_error(self.chain.n) + ADD + self.chain.rate_error
         length = add(plain(1.0), total(multiply(self.outward, before)))

@@ -7,6 +7,7 @@ method                      where                                               
 ==========================  =====================================================  =====================
 `ladder`                    up to `LADDER_ALWAYS` states; more if time allows      1e-15, any time
 `uniformisation`            any size, few expected jumps (about 1e5)               1e-9 and better
+`settling`                  any size and time, if the chain settles within reach   1e-9 and better
 `squaring`                  up to 1,000 states                                     none: an estimate
 ==========================  =====================================================  =====================
 
@@ -24,23 +25,31 @@ from typing import Literal
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from markov.chain import ladder, squaring, uniformisation
+from markov.chain import ladder, settling, squaring, uniformisation
 from markov.chain.bounds import Enclosure, Flags, Floats, Vector, distribution, relative_to_computed
 from markov.chain.doubled import UNIT, Doubled, plain, total, total_error
 from markov.chain.generator import Generator, Restriction, as_flags
 from markov.errors import NotReached, UsageError
 
-Method = Literal["ladder", "uniformisation", "squaring"]
+Method = Literal["ladder", "uniformisation", "settling", "squaring"]
 Time = Fraction | float | int
 
 #: Up to this many states the ladder is taken whatever the time.
 LADDER_ALWAYS = 130
 #: Seconds that the ladder may take where uniformisation cannot bound the answer.
 LADDER_PATIENCE = 25.0
-#: Above this many expected jumps uniformisation is left to larger chains even where it is cheap.
 _ROUNDS = "scaling and squaring in double-double"
 _UNIFORM = "uniformisation"
+_SETTLED = "uniformisation, then the settled shape"
 _ESTIMATE = "scaling and squaring in floats (estimate)"
+
+
+_NAMES: dict[Method, str] = {
+    "ladder": _ROUNDS,
+    "uniformisation": _UNIFORM,
+    "settling": _SETTLED,
+    "squaring": _ESTIMATE,
+}
 
 
 @dataclass(frozen=True, eq=False)
@@ -161,7 +170,7 @@ def transient(
         states of a class are lumped, which costs nothing and makes large down sets cheap.
     reward_error : float
         Relative error of every reward.
-    method : {"ladder", "uniformisation", "squaring"}, optional
+    method : {"ladder", "uniformisation", "settling", "squaring"}, optional
         Take this one, whatever it costs.
 
     Raises
@@ -188,10 +197,9 @@ def transient(
     classes_reached = absorbing_start | (part.absorption.high > 0.0).any(axis=0)
     later = [time for time in exact_times if time > 0]
     run = _Run(part, first.values[members], columns[members], reward_error, later)
-    chosen = method or run.choose()
-    outcome = run.by(chosen) if later and members.size else None
+    chosen, outcome = run.answer(method) if later and members.size else ("ladder", None)
     whole = first.total if first.total is not None and not classes_reached.any() else None
-    name = {"ladder": _ROUNDS, "uniformisation": _UNIFORM, "squaring": _ESTIMATE}[chosen]
+    name = _NAMES[chosen]
     earning = np.array([bool((carry & reached & ~stopped).any()) for carry in carried], dtype=bool)
     states, absorbed, integrals = [], [], []
     position = 0
@@ -287,34 +295,45 @@ class _Run:
             return None, 0.0
         return total(self.part.absorption, axis=1), self.part.absorption_error + total_error(self.classes)
 
-    def choose(self) -> Method:
-        """Pick the method."""
+    def candidates(self) -> list[Method]:
+        """Methods worth trying, the best first."""
         n = self.part.chain.n
-        if n <= LADDER_ALWAYS or not self.times:
-            return "ladder"
+        if n <= LADDER_ALWAYS:
+            return ["ladder"]
         loss, _ = self.loss()
         expected = uniformisation.expected_jumps(self.part.chain, loss, max(self.times))
         step = uniformisation.jumps(self.part.chain, loss)
-        cheap = uniformisation.affordable(step, self.times)
-        seconds = 7e-9 * n**3 * (20.0 + math.log2(expected + 2.0)) if n < 10_000 else math.inf
-        if cheap and (expected * step.roundings * UNIT < 1e-12 or seconds > 1.0):
-            return "uniformisation"
+        seconds = ladder_seconds(n, expected)
+        work = (expected + 200.0) * (step.work + 10_000)
+        chosen: list[Method] = []
+        if uniformisation.affordable(step, self.times) and (expected * step.roundings * UNIT < 1e-12 or work < 1e8):
+            chosen.append("uniformisation")
+        if seconds < 3.0:
+            chosen.append("ladder")
+        chosen.append("settling")
         if seconds <= LADDER_PATIENCE:
-            return "ladder"
-        if cheap:
-            return "uniformisation"
+            chosen.append("ladder")
+        if uniformisation.affordable(step, self.times):
+            chosen.append("uniformisation")
         if n + self.classes <= squaring.LARGEST_SQUARING:
-            return "squaring"
-        raise NotReached(
-            f"{n} states over {expected:.3g} expected jumps: too many states for squaring and too many jumps for "
-            "uniformisation; shorten the time, lump the chain or ask for steady-state values"
-        )
+            chosen.append("squaring")
+        return chosen
 
-    def by(self, method: Method) -> _Outcome:
-        """Carry out one method."""
-        return {"ladder": self._by_ladder, "uniformisation": self._by_uniformisation, "squaring": self._by_squaring}[
-            method
-        ]()
+    def answer(self, method: Method | None) -> tuple[Method, _Outcome]:
+        """Carry out one method, or the first that reaches a result."""
+        ways = {
+            "ladder": self._by_ladder,
+            "uniformisation": self._by_uniformisation,
+            "settling": self._by_settling,
+            "squaring": self._by_squaring,
+        }
+        reasons = []
+        for each in [method] if method else self.candidates():
+            try:
+                return each, ways[each]()
+            except NotReached as reason:
+                reasons.append(f"{_NAMES[each]}: {reason}")
+        raise NotReached("; ".join(dict.fromkeys(reasons)))
 
     def _by_ladder(self) -> _Outcome:
         loss, loss_error = self.loss()
@@ -340,13 +359,17 @@ class _Run:
             )
         )
 
+    def _columns(self) -> tuple[Floats, float]:
+        """Return absorption rates beside rewards, as floats, with their relative error."""
+        absorption = self.part.absorption.high + self.part.absorption.low
+        return np.concatenate((absorption, self.rewards), axis=1), max(
+            self.part.absorption_error + UNIT, self.reward_error
+        )
+
     def _by_uniformisation(self) -> _Outcome:
         loss, _ = self.loss()
         step = uniformisation.jumps(self.part.chain, loss)
-        absorption = self.part.absorption.high + self.part.absorption.low
-        columns = np.concatenate((absorption, self.rewards), axis=1)
-        error = max(self.part.absorption_error + UNIT, self.reward_error)
-        walked = uniformisation.walk(step, self.start, columns, error, self.times)
+        walked = uniformisation.walk(step, self.start, *self._columns(), self.times)
         return _Outcome(
             tuple(
                 _Moment(
@@ -362,6 +385,25 @@ class _Run:
             )
         )
 
+    def _by_settling(self) -> _Outcome:
+        loss, loss_error = self.loss()
+        lost = plain(np.zeros(self.part.chain.n)) if loss is None else loss
+        found = settling.follow(self.part.chain, lost, loss_error, self.start, *self._columns(), self.times)
+        return _Outcome(
+            tuple(
+                _Moment(
+                    each.weights,
+                    each.integrals[: self.classes],
+                    each.integrals[self.classes :],
+                    each.relative,
+                    each.absolute,
+                    each.integrals_relative,
+                    each.integrals_absolute,
+                )
+                for each in found
+            )
+        )
+
     def _by_squaring(self) -> _Outcome:
         weights, absorbed, integrals = squaring.estimate(
             self.part.chain, self.part.absorption, self.rewards, self.start, self.times
@@ -372,6 +414,11 @@ class _Run:
                 for number in range(len(self.times))
             )
         )
+
+
+def ladder_seconds(n: int, expected: float) -> float:
+    """Return about how long the ladder takes, from its matrix products (measured on one core)."""
+    return 7e-9 * n**3 * (20.0 + math.log2(expected + 2.0))
 
 
 def survival(generator: Generator, alive: ArrayLike, duration: Time, *, method: Method | None = None) -> Vector:
@@ -410,7 +457,7 @@ def survival(generator: Generator, alive: ArrayLike, duration: Time, *, method: 
     expected = uniformisation.expected_jumps(part.chain, loss, time)
     chosen = method
     if chosen is None:
-        seconds = 7e-9 * part.chain.n**3 * (20.0 + math.log2(expected + 2.0)) if part.chain.n < 10_000 else math.inf
+        seconds = ladder_seconds(part.chain.n, expected)
         step = uniformisation.jumps(part.chain, loss, backwards=True)
         small = part.chain.n <= LADDER_ALWAYS or (
             seconds <= LADDER_PATIENCE and not uniformisation.affordable(step, [time])

@@ -41,7 +41,7 @@ class Part(BaseModel):
     habits: ClassVar[Mapping[str, str]] = {}
 
     @classmethod
-    def keys(cls) -> dict[str, FieldInfo]:
+    def all_keys(cls) -> dict[str, FieldInfo]:
         """Return the keys as they are written, in the order of the reference."""
         return {each.alias or name: each for name, each in cls.model_fields.items()}
 
@@ -81,21 +81,20 @@ class Part(BaseModel):
         # What is wrong only with, or only without, a guessed key is no fault beside that of the unknown key itself.
         written = {*map(str, data)}
         with_guesses = set(cls._key_faults(written | unread))
-        told = [fault for fault in cls._key_faults(written) if fault in with_guesses]
-        faults += told
+        faults += [fault for fault in cls._key_faults(written) if fault in with_guesses]
+        left = {key for key in written if key in cls.all_keys() and key not in unread} if unread else written
         if unread and cls._faults is not Part._faults:
-            value = cls._what_is_left(data, handler, unread)
-        if value is not None and not told:
+            value = cls._what_is_left(data, handler, left)
+        if value is not None and not any(cls._key_faults(left)):
             faults += value._faults(unread)
         raise_all(faults, silent)
         return value
 
     @classmethod
-    def _what_is_left(cls, data: dict[str, Any], handler: ModelWrapValidatorHandler[Any], unread: set[str]) -> Any:
+    def _what_is_left(cls, data: dict[str, Any], handler: ModelWrapValidatorHandler[Any], left: set[str]) -> Any:
         """Read the keys that are in order, so that faults between them are told, too."""
-        known = cls.keys()
         try:
-            return handler({key: value for key, value in data.items() if key not in unread and key in known})
+            return handler({key: value for key, value in data.items() if key in left})
         except ValidationError:
             return None
 
@@ -105,13 +104,13 @@ class Part(BaseModel):
         if cls.short_form is not None and data != "" and not isinstance(data, list | tuple):
             return {cls.short_form: data}
         example = f", such as `{cls.example}`" if cls.example else ""
-        fix = f"write {choices([*cls.keys()], 'and', most=5)} under it{example}"
+        fix = f"write {choices([*cls.all_keys()], 'and', most=5)} under it{example}"
         refuse(describe(data), f"a mapping that says the {cls.kind}", fix)
 
     @classmethod
     def meant_by(cls, written: Iterable[str]) -> dict[str, str]:
         """Return, for unknown keys, the known ones that they most likely stand for."""
-        keys = cls.keys()
+        keys = cls.all_keys()
         unknown = (key for key in written if key not in keys and key not in cls.unbuilt)
         guesses = ((key, cls._habit(key) or nearest(key, keys)) for key in islice(unknown, _MOST_GUESSED))
         return {key: guess for key, guess in guesses if guess is not None}
@@ -120,7 +119,7 @@ class Part(BaseModel):
     def _habit(cls, key: str) -> str | None:
         """Return the key that a word of the trade stands for."""
         words = _QUOTED.findall(cls.habits.get(key.lower(), ""))
-        known = cls.keys()
+        known = cls.all_keys()
         return next((word for word in words if word in known), None)
 
     @classmethod
@@ -148,7 +147,7 @@ class Part(BaseModel):
 
     @classmethod
     def _unknown_key(cls, key: str, meant: str | None) -> Fault:
-        expected = f"the keys of a {cls.kind}: {choices([*cls.keys()], 'and', most=40)}"
+        expected = f"the keys of a {cls.kind}: {choices([*cls.all_keys()], 'and', most=40)}"
         if key in cls.unbuilt:
             return Fault(
                 (key,),
@@ -164,7 +163,7 @@ class Part(BaseModel):
 
     @classmethod
     def _wrong_choice(cls, key: str, path: tuple[str | int, ...], value: object) -> Fault:
-        known = cls.keys().get(key)
+        known = cls.all_keys().get(key)
         allowed = allowed_words(known.annotation) if known is not None else ()
         unbuilt = cls.unbuilt_values.get(key, ())
         if value in unbuilt if isinstance(value, str) else unbuilt and isinstance(value, Mapping):
@@ -176,7 +175,7 @@ class Part(BaseModel):
 
     @classmethod
     def _wrong_form(cls, key: str, path: tuple[str | int, ...], value: object) -> Fault:
-        known = cls.keys().get(key)
+        known = cls.all_keys().get(key)
         annotation = known.annotation if known is not None else None
         if any(get_origin(each) is tuple for each in (annotation, *get_args(annotation))):
             return Fault(path, describe(value), f"a list under {quote(key)}", "write each entry on a line after `-`")

@@ -19,7 +19,7 @@ def json_schema() -> dict[str, Any]:
     """Return the JSON Schema of a spec.
 
     An editor with a YAML language server uses it through a first line such as
-    ``# yaml-language-server: $schema=markov.schema.json``.
+    ``# yaml-language-server: $schema=markov-spec.schema.json``.
     """
     schema = _completed(Content.model_json_schema(by_alias=True))
     assert isinstance(schema, dict)  # the schema of a mapping is one

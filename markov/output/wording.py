@@ -54,11 +54,10 @@ def value_words(measure: str, value: float | None, digits: int = 6) -> str:
         distance = 1 - value
         places = min(digits - 1 - _exponent(distance), 15)
         return f"{value:.{places}f}"
-    if value != 0 and not 1e-3 <= abs(value) < 10 ** (digits + 3):
-        return f"{value:.{digits - 1}e}"
-    if value == int(value) and abs(value) < 10 ** (digits + 3):
-        return f"{int(value)}"
-    return f"{value:.{digits}g}" if abs(value) < 10**digits else f"{value:.1f}"
+    if value != 0 and not 1e-3 <= abs(value) < 1e7:
+        mantissa, exponent = f"{value:.{digits - 1}e}".split("e")
+        return f"{mantissa.rstrip('0').rstrip('.')}e{exponent}"
+    return f"{value:.0f}" if abs(value) >= 10 ** (digits - 1) else f"{value:.{digits}g}"
 
 
 def _exponent(value: float) -> int:

@@ -72,7 +72,7 @@ def measure_table() -> str:
 
 def _key_table(heading: str, part: type[Part]) -> Iterator[str]:
     yield from (f"### {heading}", "", "| key | value | left out | meaning |", "|---|---|---|---|")
-    for key, field in part.keys().items():
+    for key, field in part.all_keys().items():
         yield _row(f"`{key}`", _value(field), _left_out(field), field.description or "")
     if part is Content:
         for key, meaning in KEYS.items():

@@ -7,7 +7,6 @@ a stack, so that neither depth nor aliases can exhaust the machine.
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator
 from dataclasses import dataclass, field
 from typing import Any, NamedTuple, Protocol
 
@@ -200,7 +199,7 @@ class _Builder:
             self._tag(event, place)
             text = self._checked(event.value, place)
             # A plain empty scalar stands where its line ends; the place after the colon is what a reader looks at.
-            self._finish(Scalar(place, text), event.anchor, place, plain=event.style is None)
+            self._finish(Scalar(place, text), event.anchor, place, plain=not event.style)
         elif isinstance(event, yaml.MappingStartEvent | yaml.SequenceStartEvent):
             self._tag(event, place)
             if len(self.open) >= DEEPEST:
@@ -289,37 +288,52 @@ def _place(mark: _Mark) -> Place:
 # ---------------------------------------------------------------------------------------------- errors of syntax
 
 
-def _hints() -> Iterator[tuple[str, str, str, str]]:
-    """Yield for each error of the parser: a pattern, what was found, what was expected, a fix."""
-    yield (
-        "mapping values are not allowed|expected ':'|could not find expected",
+class _Hint(NamedTuple):
+    """What a complaint of the parser means to the author of a spec."""
+
+    pattern: str
+    found: str
+    expected: str
+    fix: str
+
+
+_HINTS = (
+    _Hint("directive", "a directive that cannot be read", _EXPECTED, "remove the line that begins with `%`"),
+    _Hint(" tag|tag handle|URI", "a tag that cannot be read", "values without tags", "remove what begins with `!`"),
+    _Hint(
+        "block scalar",
+        "text on the line of `|` or `>`",
+        "the text on the lines below, indented",
+        "move it, or put what begins with `|` or `>` into quotation marks",
+    ),
+    _Hint("depth|nesting|flow level", "text that is nested too deep", f"at most {DEEPEST} levels", "flatten it"),
+    _Hint(
+        "mapping values are not allowed|mapping keys are not allowed|expected ':'",
         "a colon in the wrong place, or a key without one",
         "`key: value` lines, equally indented within one mapping",
         "check the indentation and the colons; put text that holds `: ` into quotation marks",
-    )
-    yield (
-        "block sequence entries|'-' indicator|expected <block end>|did not find expected key",
+    ),
+    _Hint(
+        "block sequence entries|'-' indicator|expected <block end>|did not find expected key|document start",
         "a line that does not fit those above it",
         "equal indentation of all keys, or of all `-`, of one level",
         "check the indentation; put text that begins with a sign or a quotation mark into quotation marks",
-    )
-    yield (
+    ),
+    _Hint(
         "',' or '\\]'|',' or '\\}'|expected node content",
         "a bracket that is not closed, or a comma that is missing",
         "`[a, b]` or `{key: value, key: value}`",
         "close it, or put text that holds brackets or commas into quotation marks",
-    )
-    yield (
+    ),
+    _Hint(
         "end of stream|document indicator",
         "a quotation mark that is not closed",
         "text between two quotation marks",
         "close it",
-    )
-    yield ("escape|hexdec", "an unknown escape after `\\`", "plain text", "use single quotation marks, or write `\\\\`")
-    yield ("depth|nesting|flow level", "text that is nested too deep", f"at most {DEEPEST} levels", "flatten it")
-    yield ("alphabetic or numeric", "`&` or `*` without a name", _EXPECTED, "put the text into quotation marks")
-    yield ("tag|URI|handle|octet", "a tag that cannot be read", "values without tags", "remove what begins with `!`")
-    yield ("YAML|directive|document start", "a directive or a document mark out of place", _EXPECTED, "remove it")
+    ),
+    _Hint("escape|hexdec", "an unknown escape after `\\`", "plain text", "use single quotation marks, or write `\\\\`"),
+    _Hint("anchor|alias|alphabetic", "`&` or `*` without a name", _EXPECTED, "put the text into quotation marks"),
+)
 
 
 def _syntax_problem(error: yaml.MarkedYAMLError, text: str, file: str) -> Problem:
@@ -334,8 +348,9 @@ def _syntax_problem(error: yaml.MarkedYAMLError, text: str, file: str) -> Proble
     if "cannot start any token" in trouble:
         found = f"text that begins with {quote(character)}"
         return Problem(file, *place, found, "text in quotation marks", "put it into quotation marks")
-    for pattern, found, expected, fix in _hints():
-        if re.search(pattern, trouble):
+    complaint = f"{error.context or ''} {trouble}"
+    for pattern, found, expected, fix in _HINTS:
+        if re.search(pattern, complaint):
             if error.context_mark is not None and error.context_mark.line + 1 < place.line:
                 found += f" (in what begins on line {error.context_mark.line + 1})"
             return Problem(file, *place, found, expected, fix)

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,6 +24,19 @@ Index = NDArray[np.int32]
 
 #: Largest number of states of one island that is worked out.
 ISLAND_LIMIT = 5_000_000
+
+
+@dataclass(frozen=True)
+class Layer:
+    """At most one transition of each local state; shape (k,) each.
+
+    `leaves` tells which states have one, `step` is the state reached minus the state left.
+    """
+
+    leaves: NDArray[np.bool_]
+    step: NDArray[np.int64]
+    kind: Index
+    multiple: Index
 
 
 @dataclass(frozen=True)
@@ -44,6 +58,25 @@ class Table:
 
     def __len__(self) -> int:
         return len(self.target)
+
+    @cached_property
+    def layers(self) -> tuple[Layer, ...]:
+        """The transitions once more, in layers that hold at most one of each state."""
+        count = np.diff(self.first)
+        size = len(count)
+        found = []
+        for depth in range(int(count.max(initial=0))):
+            states = np.flatnonzero(count > depth)
+            at = self.first[states] + depth
+            layer = Layer(
+                np.zeros(size, np.bool_), np.zeros(size, np.int64), np.zeros(size, np.int32), np.zeros(size, np.int32)
+            )
+            layer.leaves[states] = True
+            layer.step[states] = self.target[at].astype(np.int64) - states
+            layer.kind[states] = self.kind[at]
+            layer.multiple[states] = self.multiple[at]
+            found.append(layer)
+        return tuple(found)
 
 
 @dataclass(frozen=True)

@@ -154,36 +154,32 @@ def _chunk(
 ) -> Iterator[_Found]:
     for island, chart in enumerate(charts):
         for mode, table in chart.spontaneous.items():
-            if not len(table):
-                continue
-            rows = None
+            allowed = None
             if mode != "always" and is_up is not None:
-                rows = np.flatnonzero(is_up if mode == "system_up" else ~is_up)
-            found = _expand(table, columns[island], keys, packing.strides[island], rows)
-            if len(found.row):
-                yield found
+                allowed = is_up if mode == "system_up" else ~is_up
+            yield from _expand(table, columns[island], keys, packing.strides[island], allowed)
     for pool in desk.pools:
         for (island, number, stage), served in desk.served(pool, columns):
             event = charts[island].crew_driven.get((number, stage))
-            rows = np.flatnonzero(served)
-            if event is None or not len(event) or not len(rows):
+            if event is None:
                 continue
-            found = _expand(event, columns[island], keys, packing.strides[island], rows)
-            if len(found.row):
+            for found in _expand(event, columns[island], keys, packing.strides[island], served > 0):
                 yield _Found(found.row, found.key, found.kind, found.multiple * served[found.row])
 
 
-def _expand(table: Table, local: NDArray[np.int32], keys: Keys, stride: int, rows: NDArray[np.int64] | None) -> _Found:
-    """Look up the transitions of one island for the given rows of a chunk (all rows where `rows` is None)."""
-    here = local if rows is None else local[rows]
-    begin = table.first[here]
-    count = table.first[here + 1] - begin
-    total = int(count.sum())
-    base = np.repeat(begin - (np.cumsum(count) - count), count)
-    at = base + np.arange(total)
-    row = np.repeat(np.arange(len(here)) if rows is None else rows, count)
-    key = keys[row] + (table.target[at] - local[row]).astype(np.int64) * stride
-    return _Found(row, key, table.kind[at], table.multiple[at])
+def _expand(
+    table: Table, local: NDArray[np.int32], keys: Keys, stride: int, allowed: NDArray[np.bool_] | None
+) -> Iterator[_Found]:
+    """Look up the transitions of one island in the states of a chunk (only those `allowed`, where it is given)."""
+    for layer in table.layers:
+        leaving = layer.leaves[local]
+        row = np.flatnonzero(leaving if allowed is None else leaving & allowed)
+        if len(row):
+            here = local[row]
+            key = layer.step[here]
+            key *= stride
+            key += keys[row]
+            yield _Found(row, key, layer.kind[here], layer.multiple[here])
 
 
 def _assigned(found: _Found, desk: CrewDesk, packing: Packing, kinds: ArrowKinds) -> Iterator[_Found]:

@@ -117,7 +117,10 @@ def test_train_is_a_member_by_its_name(read):
         ("members: [pmp]", "`pmp` is not known"),
         ("members: [pump], required: 2", "2 required of 1"),
         ("members: [pump], required: 0", "out of range"),
-        ("members: [{unit: pump, count: 3}], required: 2, on_duty: 1, redundancy: hot_standby", "1 on duty, 2 required"),
+        (
+            "members: [{unit: pump, count: 3}], required: 2, on_duty: 1, redundancy: hot_standby",
+            "1 on duty, 2 required",
+        ),
         ("members: [{unit: pump, count: 3}], on_duty: 4, redundancy: hot_standby", "4 on duty of 3"),
         ("members: [{unit: pump, count: 3}], on_duty: 2, redundancy: active", "2 of 3 on duty in an `active` group"),
         ("members: [{unit: pump, count: 2}]", "`redundancy` is missing: 2 members, 1 on duty"),

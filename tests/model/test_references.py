@@ -154,9 +154,7 @@ def test_places_of_items(read):
     ]
 
 
-@pytest.mark.parametrize(
-    "key", ["spares", "tests", "common_causes", "demand", "phases", "restoration", "variants"]
-)
+@pytest.mark.parametrize("key", ["spares", "tests", "common_causes", "demand", "phases", "restoration", "variants"])
 def test_keys_of_later_versions_are_refused_by_name(told, key):
     problem = told(f"{PLANT}system: water\n{key}: {{}}\n")
     assert f"`{key}` is not built yet" in problem.found

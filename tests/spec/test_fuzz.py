@@ -10,7 +10,21 @@ FRAGMENTS = [
     *("!!int ", "!<%ff> ", "!%zz", "&a ", "*a", "<<: ", "- ", "{", "}", "[", "]", ": ", "\t", "\n", "  ", "'", '"'),
     *("\\", "\\x", '"\\ud800"', '"\\U00110000"', "|\n", "> ", "---\n", "...\n", "%YAML 1.1\n", "%TAG ! x\n", "?", "#"),
     *("null", "~", ".nan", "1e999", "010", "1:30", "/h", "(", ")", "%", "é", "\x85", "\u2028", "\ufeff", "@", "`"),
-    *("[[[[", "{a: ", "&a [*a]", "y: ", "0", "-1", "count: 2", "of", "unit: ", "required: 0", "\x00", "\ud800", "a" * 150),
+    *(
+        "[[[[",
+        "{a: ",
+        "&a [*a]",
+        "y: ",
+        "0",
+        "-1",
+        "count: 2",
+        "of",
+        "unit: ",
+        "required: 0",
+        "\x00",
+        "\ud800",
+        "a" * 150,
+    ),
 ]
 WORDS = [
     *("units", "groups", "crews", "system", "targets", "parameters", "states", "transitions", "initial", "mission"),
@@ -30,15 +44,19 @@ def outcome(text: str) -> None:
     try:
         spec.read_text(text)
     except SpecError as error:
-        lines = text.count("\n") + text.count("\x85") + text.count("\u2028") + text.count("\r") + 1
-        assert error.problems
-        for problem in error.problems:
-            assert 1 <= problem.line <= lines + 1
-            assert problem.column >= 1
-            assert problem.found
-            assert problem.expected
-            assert "Input should" not in str(problem)
-            assert "<class" not in str(problem)
+        problems = error.problems
+    else:
+        return
+    lines = text.count("\n") + text.count("\x85") + text.count("\u2028") + text.count("\r") + 1
+    assert problems
+    for problem in problems:
+        assert 1 <= problem.line <= lines + 1
+        assert problem.column >= 1
+        assert problem.found
+        assert problem.expected
+        assert problem.fix
+        assert "Input should" not in str(problem)
+        assert "<class" not in str(problem)
 
 
 @st.composite

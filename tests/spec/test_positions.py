@@ -98,7 +98,7 @@ def test_misspelt_key_points_at_itself_and_bad_value_at_the_value(problems):
 def test_value_inside_a_criterion_has_its_place(told):
     text = "units: {a: {failure_rate: 1 /y}}\nsystem:\n  all_of:\n    - a\n    - any_of: [a, b]\n"
     problem = told(text)
-    assert (problem.line, problem.column) == (5, 18)
+    assert (problem.line, problem.column) == (5, 19)
     assert problem.found.startswith("system.all_of#2.any_of#2: ")
 
 
