@@ -45,3 +45,40 @@ def test_help_loads_nothing_heavy(checkout: Path, arguments: list[str]) -> None:
 
 def test_a_heavy_import_would_be_seen(checkout: Path) -> None:
     assert loaded_by("import yaml, rich.table", checkout) & HEAVY == {"yaml", "rich"}
+
+
+def test_the_public_names_are_these() -> None:
+    import markov
+
+    assert sorted(markov.__all__) == [
+        "Check",
+        "DrawingError",
+        "IllPosed",
+        "MEASURES",
+        "MarkovError",
+        "Measure",
+        "Model",
+        "NotReached",
+        "Problem",
+        "Result",
+        "Solution",
+        "SpecError",
+        "TargetResult",
+        "TooLarge",
+        "UsageError",
+        "__version__",
+        "check",
+        "draft",
+        "draw",
+        "read",
+        "solve",
+    ]
+    for name in markov.__all__:
+        assert getattr(markov, name) is not None
+
+
+def test_an_unknown_name_is_refused() -> None:
+    import markov
+
+    with pytest.raises(AttributeError, match="no attribute 'solver'"):
+        markov.solver  # noqa: B018

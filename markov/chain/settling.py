@@ -310,7 +310,7 @@ def _followed(
     weights[shape.members] = shape.weights * middle
     # Half the width over the lower end; the floats y and their products add a few roundings.
     relative = above((most - least) / (2 * least)) + 6 * UNIT if least > 0 else math.inf
-    per = shape.weights @ rewards[shape.members]
+    per = np.einsum("i,ij->j", shape.weights, rewards[shape.members])
     span_low, span_high = Fraction(low) * shortest, Fraction(high) * longest
     more = per * float((span_low + span_high) / 2)
     widened = above((span_high - span_low) / (2 * span_low)) + (shape.weights.size + 8) * UNIT + rewards_error

@@ -17,7 +17,7 @@ Anything else raises NotReached.
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Literal
@@ -321,14 +321,15 @@ class _Run:
 
     def answer(self, method: Method | None) -> tuple[Method, _Outcome]:
         """Carry out one method, or the first that reaches a result."""
-        ways = {
+        ways: dict[Method, Callable[[], _Outcome]] = {
             "ladder": self._by_ladder,
             "uniformisation": self._by_uniformisation,
             "settling": self._by_settling,
             "squaring": self._by_squaring,
         }
         reasons = []
-        for each in [method] if method else self.candidates():
+        order: list[Method] = [method] if method else self.candidates()
+        for each in order:
             try:
                 return each, ways[each]()
             except NotReached as reason:

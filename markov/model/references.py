@@ -212,7 +212,7 @@ def _while_down_faults(partial: Partial) -> Iterator[Fault]:
 
 
 def _initial_faults(partial: Partial) -> Iterator[Fault]:
-    content, written = partial.content, partial.raw.get("initial")
+    content = partial.content
     whole = partial.is_whole("units", "groups", "system", "crews")
     taken: dict[str, str] = {}
     for key, faults in content.initial.items():
@@ -233,10 +233,6 @@ def _initial_faults(partial: Partial) -> Iterator[Fault]:
         if taken.setdefault(place.key, key) != key:
             found = f"{quote(key)} means the same units as {quote(taken[place.key])}"
             yield Fault(path, found, "each place once", "remove one of them", on_key=True)
-        short = isinstance(written, Mapping) and not isinstance(written.get(key), Mapping)
-        if short and place.count > 1:
-            found = f"`failed` for {place.count} units {quote(place.unit)}"
-            yield Fault(path, found, "how many of them", "write `{failed: 1}` or another number")
         if faults.failed > place.count:
             found = f"{faults.failed} failed of {place.count}"
             yield Fault((*path, "failed"), found, f"at most {place.count}", "lower it")

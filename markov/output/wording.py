@@ -51,9 +51,7 @@ def value_words(measure: str, value: float | None, digits: int = 6) -> str:
     if value is None:
         return "—"
     if measure in _NEAR_ONE and 0.9 < value < 1:
-        distance = 1 - value
-        places = min(digits - 1 - _exponent(distance), 15)
-        return f"{value:.{places}f}"
+        return f"{value:.{min(digits - 1 - _exponent(1 - value), 16)}f}"
     if value != 0 and not 1e-3 <= abs(value) < 1e7:
         mantissa, exponent = f"{value:.{digits - 1}e}".split("e")
         return f"{mantissa.rstrip('0').rstrip('.')}e{exponent}"

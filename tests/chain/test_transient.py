@@ -10,10 +10,11 @@ import pytest
 
 from markov import chain as room
 from markov.chain import uniformisation
+from markov.errors import NotReached
 from tests.chain import balls, families
 
-METHODS = ("ladder", "uniformisation", "squaring")
-WIDTH = {"ladder": 3e-15, "uniformisation": 2e-9}
+METHODS = ("ladder", "uniformisation", "settling", "squaring")
+WIDTH = {"ladder": 3e-15, "uniformisation": 2e-9, "settling": 2e-6}
 
 
 def suited(chain: families.Chain, method: str) -> list[Fraction]:
@@ -45,7 +46,11 @@ def test_states_and_integrals_are_contained(method):
         times = suited(chain, method)
         if not times:
             continue
-        found = room.transient(chain.generator(), 0, times, [chain.down_flags], method=method)
+        try:
+            found = room.transient(chain.generator(), 0, times, [chain.down_flags], method=method)
+        except NotReached:
+            assert method == "settling"
+            continue
         for time, states, spent in zip(times, found.states, found.integrals, strict=True):
             truth = balls.exponential(chain, time, reward=chain.down)
             for state in range(chain.n):
@@ -62,9 +67,13 @@ def test_absorption_is_contained(method):
         times = suited(chain, method)
         if not times:
             continue
-        found = room.transient(
-            chain.generator(), 0, times, [~chain.down_flags], absorbing=chain.down_flags, method=method
-        )
+        try:
+            found = room.transient(
+                chain.generator(), 0, times, [~chain.down_flags], absorbing=chain.down_flags, method=method
+            )
+        except NotReached:
+            assert method == "settling"
+            continue
         alive = [state for state in range(chain.n) if state not in chain.down]
         for number, time in enumerate(times):
             truth = balls.exponential(chain, time, stopped=chain.down, reward=alive)

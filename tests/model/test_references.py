@@ -130,7 +130,6 @@ def test_units_failed_at_the_start(read):
     ("initial", "found"),
     [
         ("{pump: failed}", "serves in several places"),
-        ("{water.pump: failed}", "`failed` for 2 units"),
         ("{water.pump: {failed: 3}}", "3 failed of 2"),
         ("{water.valve: failed}", "not known"),
         ("{vlave: failed}", "not known"),
@@ -170,3 +169,7 @@ def test_length_of_the_year_changes_years(read):
     model = read(f"year: 365.25 d\n{PLANT}system: water\nmission: {{time: 1 y}}\n")
     assert model.year_hours == 8766
     assert model.mission.time.exact == 8766
+
+
+def test_the_word_failed_means_one_item(read):
+    assert read(INITIAL + "{water.pump: failed}").initial["water.pump"].failed == 1
