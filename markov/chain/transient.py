@@ -197,7 +197,10 @@ def transient(
     classes_reached = absorbing_start | (part.absorption.high > 0.0).any(axis=0)
     later = [time for time in exact_times if time > 0]
     run = _Run(part, first.values[members], columns[members], reward_error, later)
-    chosen, outcome = run.answer(method) if later and members.size else ("ladder", None)
+    chosen: Method = method or "ladder"
+    outcome: _Outcome | None = None
+    if later and members.size:
+        chosen, outcome = run.answer(method)
     whole = first.total if first.total is not None and not classes_reached.any() else None
     name = _NAMES[chosen]
     earning = np.array([bool((carry & reached & ~stopped).any()) for carry in carried], dtype=bool)

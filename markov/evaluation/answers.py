@@ -29,13 +29,13 @@ from markov.chain import (
 from markov.errors import IllPosed
 from markov.evaluation.questions import Question
 from markov.rates import split_exact
-from markov.states import GeneratedSpace, Pool, StateSpace
+from markov.states import StateSpace
 
 Mask = NDArray[np.bool_]
 Values = NDArray[np.float64]
 
 #: Relative error of one rounded operation.
-_UNIT = 2.0**-53
+UNIT = 2.0**-53
 
 
 @dataclass(frozen=True)
@@ -70,12 +70,12 @@ class Answers:
     def generator(self) -> Generator:
         """The rates of the chain, parallel transitions added."""
         moving = self.space.arrows.moving
-        high, low = self._arrow_rates
+        high, low = self.arrow_rates
         arrows = self.space.arrows
         return aggregate(self.space.size, arrows.source[moving], arrows.target[moving], high[moving], low[moving])
 
     @cached_property
-    def _arrow_rates(self) -> tuple[Values, Values]:
+    def arrow_rates(self) -> tuple[Values, Values]:
         """Rate of every transition, multiples included, as sums of two floats, shape (a,) each."""
         arrows, kinds = self.space.arrows, self.space.kinds
         rate = np.array([kind.rate for kind in kinds.kinds], np.int64)[arrows.kind] if len(arrows) else arrows.kind
@@ -93,7 +93,7 @@ class Answers:
         values = np.zeros(self.space.size)
         for state, chance in self.space.start:
             values[state] = float(chance)
-        return Vector(values, 2 * _UNIT, 0.0, "given", values > 0.0, 1.0)
+        return Vector(values, 2 * UNIT, 0.0, "given", values > 0.0, 1.0)
 
     @cached_property
     def _start_states(self) -> list[int]:
@@ -126,7 +126,7 @@ class Answers:
             found.append(_Class(members, stationary(self.generator, members)))
         return tuple(found)
 
-    def _long_run(self, weigh: Callable[[Vector], Enclosure]) -> Enclosure:
+    def long_run(self, weigh: Callable[[Vector], Enclosure]) -> Enclosure:
         """Return a long-run mean, the same from every class that the chain may end in."""
         values = [weigh(each.distribution) for each in self._classes]
         if len(values) == 1:
@@ -140,18 +140,20 @@ class Answers:
             raise IllPosed("some histories end down for good and others live on, so there is no one long-run value")
         raise IllPosed("the chain can end in several ways, so the long-run value depends on chance or on the start")
 
-    def _long_run_share(self, states: Mask) -> Enclosure:
-        return self._long_run(lambda pi: pi.weighted(states))
+    def long_run_share(self, states: Mask) -> Enclosure:
+        """Return the long-run share of time in some states."""
+        return self.long_run(lambda pi: pi.weighted(states))
 
     def _frequency(self, of: str | None) -> Enclosure:
         passages = self._failure_flow(of)
-        return self._long_run(lambda pi: pi.weighted(passages))
+        return self.long_run(lambda pi: pi.weighted(passages))
 
     def _failure_flow(self, of: str | None) -> Vector:
         up = self.up(of)
         return flow(self.generator, up, ~up)
 
-    def _per_year(self, value: Enclosure) -> Enclosure:
+    def per_year(self, value: Enclosure) -> Enclosure:
+        """Return a number per hour, or a share of time, as a number or hours per year."""
         return value.times(self.year_hours)
 
     # --- at given times --------------------------------------------------------------------------------------------
@@ -226,11 +228,11 @@ class Answers:
             raise AssertionError("an interval reliability has an interval")
         lasting = survival(self.generator, self.up(question.of), question.for_hours)
         if question.at_hours is None:
-            return self._long_run(lambda pi: pi.weighted(lasting)).capped()
+            return self.long_run(lambda pi: pi.weighted(lasting)).capped()
         return self._states_at(question.at_hours).weighted(lasting).capped()
 
     def _share_of_states(self, states: Mask, at: Fraction | None) -> Enclosure:
-        return self._long_run_share(states) if at is None else self._states_at(at).weighted(states)
+        return self.long_run_share(states) if at is None else self._states_at(at).weighted(states)
 
     def _availability(self, question: Question) -> Enclosure:
         return self._share_of_states(self.up(question.of), question.at_hours)
@@ -290,10 +292,10 @@ class Answers:
         return self._integral(_time(question), question.of, 1)
 
     def _failures_per_year(self, question: Question) -> Enclosure:
-        return self._per_year(self._frequency(question.of))
+        return self.per_year(self._frequency(question.of))
 
     def _downtime_per_year(self, question: Question) -> Enclosure:
-        return self._per_year(self._long_run_share(~self.up(question.of)))
+        return self.per_year(self.long_run_share(~self.up(question.of)))
 
     def _conditional_failure_intensity(self, question: Question) -> Enclosure:
         up = self._availability(question)
@@ -319,106 +321,24 @@ class Answers:
         states[self.space.find(question.state)] = True
         return self._share_of_states(states, question.at_hours)
 
-    def _mean_of(self, values: Values, at: Fraction | None) -> Enclosure:
+    def mean_of(self, values: Values, at: Fraction | None) -> Enclosure:
+        """Return the mean of a number that each state has, in the long run or at a time."""
         if at is None:
-            return self._long_run(lambda pi: pi.weighted(values, _UNIT))
-        return self._states_at(at).weighted(values, _UNIT)
+            return self.long_run(lambda pi: pi.weighted(values, UNIT))
+        return self._states_at(at).weighted(values, UNIT)
 
     def _mean_units_failed(self, question: Question) -> Enclosure:
-        return self._mean_of(self.space.failed(question.of), question.at_hours)
+        return self.mean_of(self.space.failed(question.of), question.at_hours)
 
     def _mean_capacity(self, question: Question) -> Enclosure:
         share = self.space.capacity(question.of)
         if np.isin(share, (0.0, 1.0)).all():
             return self._share_of_states(share == 1.0, question.at_hours)
         # A share is formed by a few roundings: divisions by `required` and sums over the members.
-        weights = (16 * _UNIT,)
+        weights = (16 * UNIT,)
         if question.at_hours is None:
-            return self._long_run(lambda pi: pi.weighted(share, *weights)).capped()
+            return self.long_run(lambda pi: pi.weighted(share, *weights)).capped()
         return self._states_at(question.at_hours).weighted(share, *weights).capped()
-
-    # --- what redundancy costs -------------------------------------------------------------------------------------
-
-    @property
-    def _plant(self) -> GeneratedSpace:
-        if not isinstance(self.space, GeneratedSpace):
-            raise IllPosed("a hand-written chain does not tell units, crews or starts apart")
-        return self.space
-
-    def _count_rate(self, per_kind: Values) -> Enclosure:
-        """Return the long-run number per hour of something that each arrow counts so many times."""
-        counts = per_kind[self.space.arrows.kind]
-        counting = counts > 0
-        rates = self._arrow_rates[0][counting] * counts[counting]
-        return self._flow_rate(self.space.arrows.source[counting], rates)
-
-    def _flow_rate(self, source: NDArray[np.int32], rates: Values) -> Enclosure:
-        weights = np.bincount(source, weights=rates, minlength=self.space.size).astype(np.float64)
-        terms = int(np.bincount(source, minlength=1).max()) if len(source) else 0
-        return self._long_run(lambda pi: pi.weighted(weights, (terms + 3) * _UNIT))
-
-    def _repairs_per_year(self, question: Question) -> Enclosure:
-        slots = self._slots(question.of)
-        kinds = self.space.kinds.kinds
-        counts = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])
-        return self._per_year(self._count_rate(counts))
-
-    def _slots(self, of: str | None) -> frozenset[tuple[str, str]]:
-        """Return (island, slot) of everything that a subject covers: the system, a group, a unit or a crew pool."""
-        plant = self._plant
-        for pool in plant.pools(of) if of is not None else ():
-            return frozenset().union(*(plant.slots_of(kind.unit) for kind in pool.kinds))
-        return plant.slots_of(of)
-
-    def _starts_per_year(self, question: Question) -> Enclosure:
-        slots = self._slots(question.of)
-        counts = np.array(
-            [float(sum((kind.island, start) in slots for start in kind.starts)) for kind in self.space.kinds.kinds]
-        )
-        return self._per_year(self._count_rate(counts))
-
-    def _crew_utilisation(self, question: Question) -> Enclosure:
-        pools = self._pools(question.of)
-        busy = np.sum([self._plant.crews_at_work(pool) for pool in pools], axis=0)
-        return self._mean_of(busy, None).over(sum(pool.size for pool in pools)).capped()
-
-    def _waiting_for_crew(self, question: Question) -> Enclosure:
-        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in self._pools(question.of)]
-        return self._mean_of(np.sum(waiting, axis=0), None)
-
-    def _probability_of_waiting(self, question: Question) -> Enclosure:
-        arrows, kinds = self.space.arrows, self.space.kinds.kinds
-        rates = self._arrow_rates[0]
-        calls = np.zeros(len(arrows))
-        refused = np.zeros(len(arrows))
-        for pool in self._pools(question.of):
-            slots = self._slots(pool.name)
-            calling = self._plant.calling(pool)
-            ended = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])[arrows.kind]
-            before = calling[arrows.source] - ended
-            new = np.maximum(calling[arrows.target] - before, 0)
-            free = np.maximum(pool.size - before, 0)
-            calls += new
-            refused += np.maximum(new - free, 0)
-        counting = calls > 0
-        if not counting.any():
-            raise IllPosed("no fault ever calls for a crew")
-        every = self._flow_rate(arrows.source[counting], (rates * calls)[counting])
-        if every.upper == 0:
-            raise IllPosed("in the long run no fault calls for a crew")
-        counting = refused > 0
-        return (self._flow_rate(arrows.source[counting], (rates * refused)[counting]) / every).capped()
-
-    def _pools(self, of: str | None) -> tuple[Pool, ...]:
-        pools = self._plant.pools(of)
-        if not pools:
-            raise IllPosed(
-                "the chain has no crew pool" if of is None else f"crew pool {of} serves nothing in the chain"
-            )
-        return pools
-
-    def _time_without_redundancy(self, question: Question) -> Enclosure:
-        return self._per_year(self._long_run_share(self._plant.without_redundancy(question.of)))
 
 
 #: Measures that are integrals over time, worked out together for all subjects.
@@ -463,13 +383,7 @@ _MEASURES: dict[str, Callable[[Answers, Question], Enclosure]] = {
     "pfd_average": Answers._unavailability,
     "pfd_peak": Answers._unavailability,
     "pfh": Answers._failure_frequency,
-    "repairs_per_year": Answers._repairs_per_year,
-    "starts_per_year": Answers._starts_per_year,
-    "crew_utilisation": Answers._crew_utilisation,
-    "waiting_for_crew": Answers._waiting_for_crew,
-    "probability_of_waiting": Answers._probability_of_waiting,
     "mean_units_failed": Answers._mean_units_failed,
     "mean_capacity": Answers._mean_capacity,
-    "time_without_redundancy": Answers._time_without_redundancy,
     "state_probability": Answers._state_probability,
 }

@@ -14,6 +14,9 @@ from markov.evaluation.questions import Question
 from markov.model import Group, Member, Model, Named
 from markov.states import generate
 
+#: The measures that `gain` answers.
+GAINS = ("gain_over_single_unit", "gain_over_independent_blocks")
+
 Rival = Callable[[Model, Fraction | None], Enclosure]
 
 

@@ -6,12 +6,12 @@ from collections.abc import Callable, Sequence
 from fractions import Fraction
 
 from markov._version import __version__
-from markov.chain import Enclosure
 from markov.errors import IllPosed, NotReached
 from markov.evaluation.answers import Answers
-from markov.evaluation.gains import gain
+from markov.evaluation.gains import GAINS, gain
 from markov.evaluation.questions import Question, all_questions, question_of
 from markov.evaluation.unsaid import unsaid_choices
+from markov.evaluation.upkeep import UPKEEP, Upkeep
 from markov.evaluation.verdicts import judge
 from markov.model import Model
 from markov.results import Check, Result, Solution
@@ -87,43 +87,29 @@ def solve_model(
 
 
 def _result(model: Model, answers: Answers, question: Question) -> Result:
+    found, reason = None, None
     try:
-        if question.measure.startswith("gain_over_"):
-            return _told(question, gain(model, answers, question))
-        return _told(question, answers.answer(question))
+        if question.measure in GAINS:
+            found = gain(model, answers, question)
+        elif question.measure in UPKEEP:
+            found = Upkeep(answers).answer(question)
+        else:
+            found = answers.answer(question)
     except IllPosed as error:
-        return _without(question, error.reason)
+        reason = error.reason
     except NotReached as error:
-        return _without(question, f"not reached: {error}")
-
-
-def _told(question: Question, found: Enclosure) -> Result:
+        reason = f"not reached: {error}"
     return Result(
         measure=question.measure,
         of=question.of,
         state=question.state,
         at_hours=question.at_hours,
         for_hours=question.for_hours,
-        value=found.value,
-        lower=found.lower,
-        upper=found.upper,
+        value=None if found is None else found.value,
+        lower=None if found is None else found.lower,
+        upper=None if found is None else found.upper,
         unit=question.asked.unit,
-        method=found.method,
-    )
-
-
-def _without(question: Question, reason: str) -> Result:
-    return Result(
-        measure=question.measure,
-        of=question.of,
-        state=question.state,
-        at_hours=question.at_hours,
-        for_hours=question.for_hours,
-        value=None,
-        lower=None,
-        upper=None,
-        unit=question.asked.unit,
-        method="none",
+        method="none" if found is None else found.method,
         reason=reason,
     )
 

@@ -19,7 +19,7 @@ from markov.states.layout import Digits, Layout, Node, Slot, Train, node_of
 from markov.states.naming import island_label, join_labels
 from markov.states.plan import Plan, Pool, plan
 from markov.states.redundancy import critical
-from markov.states.space import Arrows, Mask, Values, delivered_share, no_such_state, structure
+from markov.states.space import Arrows, Mask, Values, no_such_state, structure
 from markov.states.takeover import fill_by_rank
 
 
@@ -114,7 +114,7 @@ class GeneratedSpace:
         if subject is None:
             if self.plan.model.system is None:
                 raise AssertionError("a generated chain has a system")
-            return delivered_share(self.plan.model.system, self._share_of)
+            return structure(self.plan.model.system, self._share_of)
         if self.plan.island(subject) is None:
             raise IllPosed(f"{subject} delivers as part of its group; ask for the capacity of the group")
         return self._share_of(subject)

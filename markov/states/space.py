@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
-from typing import Protocol
+from typing import Protocol, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +14,7 @@ from markov.errors import IllPosed
 from markov.model import AllOf, AnyOf, AtLeast, Named, Success
 from markov.states.arrows import ArrowKinds
 
+_Value = TypeVar("_Value", np.bool_, np.float64)
 Mask = NDArray[np.bool_]
 Values = NDArray[np.float64]
 
@@ -80,25 +81,14 @@ class StateSpace(Protocol):
         """Number of the state of that name."""
 
 
-def structure(success: Success, delivers: Callable[[str], Mask]) -> Mask:
-    """Evaluate the success of a structure over all states, shape (n,)."""
-    if isinstance(success, Named):
-        return delivers(success.name)
-    parts = np.array([structure(part, delivers) for part in success.of])
-    if isinstance(success, AllOf):
-        return np.asarray(parts.all(axis=0))
-    if isinstance(success, AnyOf):
-        return np.asarray(parts.any(axis=0))
-    if isinstance(success, AtLeast):
-        return np.asarray(parts.sum(axis=0) >= success.count)
-    raise AssertionError(f"unknown structure {success!r}")
+def structure(success: Success, part: Callable[[str], NDArray[_Value]]) -> NDArray[_Value]:
+    """Evaluate a structure over all states: the least, the greatest or the k-th greatest of its parts, shape (n,).
 
-
-def delivered_share(success: Success, capacity: Callable[[str], Values]) -> Values:
-    """Evaluate the delivered share of a structure: the least, the greatest or the k-th greatest of its parts."""
+    On flags this is success; on delivered shares it is the delivered share.
+    """
     if isinstance(success, Named):
-        return capacity(success.name)
-    parts = np.array([delivered_share(part, capacity) for part in success.of])
+        return part(success.name)
+    parts = np.array([structure(each, part) for each in success.of])
     if isinstance(success, AllOf):
         return np.asarray(parts.min(axis=0))
     if isinstance(success, AnyOf):

@@ -116,7 +116,7 @@ def test_jumps_in_the_hundred_thousand_millions_are_contained():
             check(states.entry(state), truth[0, state], "ladder", f"{chain.name} state {state}")
 
 
-@pytest.mark.parametrize("method", METHODS)
+@pytest.mark.parametrize("method", ["ladder", "uniformisation", "squaring"])
 def test_erlang_hundred_at_the_foot_of_its_rise(method):
     stages = 100
     rates = {(i, i + 1): Fraction(1, 3) for i in range(stages)}

@@ -1,0 +1,121 @@
+"""What redundancy costs: repairs, starts, crews at work and waiting, time without redundancy."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+from numpy.typing import NDArray
+
+from markov.chain import Enclosure
+from markov.errors import IllPosed
+from markov.evaluation.answers import UNIT, Answers
+from markov.evaluation.questions import Question
+from markov.states import GeneratedSpace, Pool
+
+Values = NDArray[np.float64]
+
+
+class Upkeep:
+    """Answers questions about upkeep from the arrows of one generated chain.
+
+    Raises
+    ------
+    IllPosed
+        The chain is written by hand and does not tell units, crews or starts apart.
+    """
+
+    def __init__(self, answers: Answers) -> None:
+        if not isinstance(answers.space, GeneratedSpace):
+            raise IllPosed("a hand-written chain does not tell units, crews or starts apart")
+        self._answers = answers
+        self._plant = answers.space
+
+    def answer(self, question: Question) -> Enclosure:
+        """Answer one question of `UPKEEP`."""
+        return UPKEEP[question.measure](self, question)
+
+    def _count_rate(self, per_kind: Values) -> Enclosure:
+        """Return the long-run number per hour of something that each arrow counts so many times."""
+        counts = per_kind[self._plant.arrows.kind]
+        counting = counts > 0
+        rates = self._answers.arrow_rates[0][counting] * counts[counting]
+        return self._flow_rate(self._plant.arrows.source[counting], rates)
+
+    def _flow_rate(self, source: NDArray[np.int32], rates: Values) -> Enclosure:
+        weights = np.bincount(source, weights=rates, minlength=self._plant.size).astype(np.float64)
+        terms = int(np.bincount(source, minlength=1).max()) if len(source) else 0
+        return self._answers.long_run(lambda pi: pi.weighted(weights, (terms + 3) * UNIT))
+
+    def _repairs_per_year(self, question: Question) -> Enclosure:
+        slots = self._slots(question.of)
+        kinds = self._plant.kinds.kinds
+        counts = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])
+        return self._answers.per_year(self._count_rate(counts))
+
+    def _slots(self, of: str | None) -> frozenset[tuple[str, str]]:
+        """Return (island, slot) of everything that a subject covers: the system, a group, a unit or a crew pool."""
+        plant = self._plant
+        for pool in plant.pools(of) if of is not None else ():
+            return frozenset().union(*(plant.slots_of(kind.unit) for kind in pool.kinds))
+        return plant.slots_of(of)
+
+    def _starts_per_year(self, question: Question) -> Enclosure:
+        slots = self._slots(question.of)
+        counts = np.array(
+            [float(sum((kind.island, start) in slots for start in kind.starts)) for kind in self._plant.kinds.kinds]
+        )
+        return self._answers.per_year(self._count_rate(counts))
+
+    def _crew_utilisation(self, question: Question) -> Enclosure:
+        pools = self._pools(question.of)
+        busy = np.sum([self._plant.crews_at_work(pool) for pool in pools], axis=0)
+        return self._answers.mean_of(busy, None).over(sum(pool.size for pool in pools)).capped()
+
+    def _waiting_for_crew(self, question: Question) -> Enclosure:
+        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in self._pools(question.of)]
+        return self._answers.mean_of(np.sum(waiting, axis=0), None)
+
+    def _probability_of_waiting(self, question: Question) -> Enclosure:
+        arrows, kinds = self._plant.arrows, self._plant.kinds.kinds
+        rates = self._answers.arrow_rates[0]
+        calls = np.zeros(len(arrows))
+        refused = np.zeros(len(arrows))
+        for pool in self._pools(question.of):
+            slots = self._slots(pool.name)
+            calling = self._plant.calling(pool)
+            ended = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])[arrows.kind]
+            before = calling[arrows.source] - ended
+            new = np.maximum(calling[arrows.target] - before, 0)
+            free = np.maximum(pool.size - before, 0)
+            calls += new
+            refused += np.maximum(new - free, 0)
+        counting = calls > 0
+        if not counting.any():
+            raise IllPosed("no fault ever calls for a crew")
+        every = self._flow_rate(arrows.source[counting], (rates * calls)[counting])
+        if every.upper == 0:
+            raise IllPosed("in the long run no fault calls for a crew")
+        counting = refused > 0
+        return (self._flow_rate(arrows.source[counting], (rates * refused)[counting]) / every).capped()
+
+    def _pools(self, of: str | None) -> tuple[Pool, ...]:
+        pools = self._plant.pools(of)
+        if not pools:
+            raise IllPosed(
+                "the chain has no crew pool" if of is None else f"crew pool {of} serves nothing in the chain"
+            )
+        return pools
+
+    def _time_without_redundancy(self, question: Question) -> Enclosure:
+        return self._answers.per_year(self._answers.long_run_share(self._plant.without_redundancy(question.of)))
+
+
+UPKEEP: dict[str, Callable[[Upkeep, Question], Enclosure]] = {
+    "repairs_per_year": Upkeep._repairs_per_year,
+    "starts_per_year": Upkeep._starts_per_year,
+    "crew_utilisation": Upkeep._crew_utilisation,
+    "waiting_for_crew": Upkeep._waiting_for_crew,
+    "probability_of_waiting": Upkeep._probability_of_waiting,
+    "time_without_redundancy": Upkeep._time_without_redundancy,
+}
