@@ -242,11 +242,11 @@ def product(x: Doubled, y: Doubled) -> Doubled:
     result = zeros(rows, columns)
     if inner == 0 or rows == 0 or columns == 0:
         return result
-    cross = x.low @ y.high + x.high @ y.low
-    x1, x2 = (np.ascontiguousarray(part.T)[:, :, None] for part in split(x.high))
+    # No library product for the cross terms: its threads cost more than they save beside other work, and it sums in
+    # an order with a larger bound.
+    x0, x1, x2, x3 = (np.ascontiguousarray(part.T)[:, :, None] for part in (x.high, *split(x.high), x.low))
     y1, y2 = (part[:, None, :] for part in split(y.high))
-    x0 = np.ascontiguousarray(x.high.T)[:, :, None]
-    y0 = y.high[:, None, :]
+    y0, y3 = y.high[:, None, :], y.low[:, None, :]
     step = max(1, _BLOCK // (inner * columns))
     shape = (inner, min(step, rows), columns)
     main, rest, work = np.empty(shape), np.empty(shape), np.empty(shape)
@@ -257,7 +257,7 @@ def product(x: Doubled, y: Doubled) -> Doubled:
         np.multiply(x0[:, begin:end], y0, out=p)
         np.multiply(a1, y1, out=e)
         np.subtract(e, p, out=e)
-        for left, right in ((a1, y2), (a2, y1), (a2, y2)):
+        for left, right in ((a1, y2), (a2, y1), (a2, y2), (x0[:, begin:end], y3), (x3[:, begin:end], y0)):
             np.multiply(left, right, out=q)
             np.add(e, q, out=e)
         count = inner
@@ -275,18 +275,18 @@ def product(x: Doubled, y: Doubled) -> Doubled:
             np.add(e[:half], p[:half], out=e[:half])
             p[:half] = s
             count -= half
-        result.high[begin:end], result.low[begin:end] = _quick_two_sum(p[0], e[0] + cross[begin:end])
+        result.high[begin:end], result.low[begin:end] = _quick_two_sum(p[0], e[0])
     return result
 
 
 def product_error(inner: int) -> float:
     """Return the entrywise relative error bound of `product` over `inner` terms.
 
-    Let ``c = sum xh yh``, ``h`` the height of the tree over k terms.  The leading products are summed by TwoSum, whose
-    errors are at most ``u c`` per level.  The low terms (products' errors, TwoSum errors) are at most ``u c (1 + h)``
-    in all, and each passes at most ``2 h`` additions: ``2 h (1 + h) w``.  The cross terms, at most ``2 u c``, come from
-    two ordinary matrix products of any order of summation, ``2 k w``, and one addition, ``2 w``.  Adding both rounds by
-    ``(h + 3) w``, dropping ``xl yl`` costs ``w``.  In sum ``2 k + 2 h**2 + 3 h + 6``, stated with 8 in place of 6.
+    Let ``c = sum xh yh``, ``h`` the height of the tree over k terms.  The low parts of one term, the product's error
+    and two cross products, are each at most ``u`` times it; rounding the cross products costs ``2 w``, adding the
+    three ``5 w``. The leading products are summed by TwoSum, whose errors are at most ``u c`` per level, so the low
+    terms are at most ``(3 + h) u c`` in all.  At each level they pass two additions: ``2 h (3 + h) w``.  Dropping
+    ``xl yl`` costs ``w``. In sum ``2 h**2 + 6 h + 8``, stated with 10 in place of 8.
     """
     height = max(0, inner - 1).bit_length()
-    return (2 * inner + 2 * height * height + 3 * height + 8) * W
+    return (2 * height * height + 6 * height + 10) * W

@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from scipy.sparse import csr_array
+from scipy.sparse import coo_array, csr_array
 from scipy.sparse.csgraph import connected_components
 
 from markov.chain.bounds import Flags, Floats
@@ -223,6 +223,18 @@ class Restriction:
     absorption_error: float
 
 
+def _ascending(n: int, tail: NDArray[np.int64], head: NDArray[np.int64]) -> NDArray[np.int64]:
+    """Return the stable order by source then target.
+
+    Where no transition is parallel to another, turning into a sparse matrix does it faster than sorting.
+    """
+    numbered = coo_array((np.arange(tail.size, dtype=np.int64), (tail, head)), shape=(n, n)).tocsr()
+    if numbered.nnz == tail.size:
+        numbered.sort_indices()
+        return np.asarray(numbered.data, dtype=np.int64)
+    return np.argsort(tail * n + head, kind="stable")
+
+
 def as_flags(states: ArrayLike, n: int) -> Flags:
     """Return a fresh array of flags from flags, one number or a list of numbers."""
     given = np.asarray(states)
@@ -286,7 +298,7 @@ def aggregate(
         )
     pair = tail * n + head
     if not bool((pair[1:] > pair[:-1]).all()):
-        order = np.argsort(pair, kind="stable")
+        order = _ascending(n, tail, head)
         pair, first, second = pair[order], first[order], second[order]
     fresh = np.ones(pair.size, dtype=bool)
     fresh[1:] = pair[1:] != pair[:-1]

@@ -112,7 +112,8 @@ class Hub:
         return flow, self._dense or sweeps(flow, self._levels)
 
     @cached_property
-    def _column(self) -> tuple[Flow, Solver]:
+    def column(self) -> tuple[Flow, Solver]:
+        """The system of values per state, with its solver."""
         flow = self._flow("column")
         return flow, self._dense.turned("column") if self._dense else sweeps(flow, self._levels)
 
@@ -142,7 +143,7 @@ class Hub:
 
     def solve(self, side: Literal["row", "column"], b: Doubled, b_error: float) -> tuple[Doubled, float]:
         """Solve one system off the hub, certified."""
-        flow, solver = self.row if side == "row" else self._column
+        flow, solver = self.row if side == "row" else self.column
         return solve_certified(flow, b, b_error, solver)
 
     @cached_property

@@ -1,10 +1,7 @@
 """Long missions of large chains: uniformise until the shape has settled, then follow that shape with a proof.
 
-Let Q be the rates among the states that are not yet absorbed, y > 0 a row vector and theta numbers with
-
-    -theta_hi y <= y Q <= -theta_lo y        entry by entry                       (Collatz and Wielandt).
-
-Since ``exp(Q s) >= 0``, integrating ``d/ds y exp(Q s) = (y Q) exp(Q s)`` gives
+Let y > 0 with ``-theta_hi y <= y Q <= -theta_lo y`` be a verified shape (`markov.chain.shape`), Q the rates among the
+states that are not yet absorbed.  Since ``exp(Q s) >= 0``, integrating ``d/ds y exp(Q s) = (y Q) exp(Q s)`` gives
 
     exp(-theta_hi s) y <= y exp(Q s) <= exp(-theta_lo s) y                        for all s >= 0.
 
@@ -13,173 +10,40 @@ So if the state weights at some time tau lie between ``a y`` and ``b y``, then f
     a exp(-theta_hi s) y <= p(tau + s) <= b exp(-theta_lo s) y,
 
 and integrals of non-negative rewards are enclosed by integrating both sides: the cost no longer grows with the
-mission.  The vector y is the quasi-stationary shape (the stationary vector where nothing absorbs), solved around a
-likely state and refined in double-double until ``theta_hi - theta_lo`` is far below ``1/t``; the inequality itself is
-evaluated in double-double with all errors counted.  a and b come from the ratios ``p(tau)_j / y_j`` with the proven
+mission.  a and b come from the ratios ``p(tau)_j / y_j`` with the proven
 error of the uniformised weights.  Weight on states that the shape does not cover (left for good, or not yet drained)
 is an absolute error.
 
 The number of steps is about 30 times the fastest rate over the slowest repair rate.  Chains whose parts are nearly
 uncoupled do not settle in reach; the method then declines.
 
-Source: L. Collatz, Math. Z. 48 (1942), H. Wielandt, Math. Z. 52 (1950) for the bounds of eigenvalues (from memory); the
-enclosure of transient values is derived here.
+Survival of a duration is the same with column vectors: values per state in place of weights.
+
+Source: derived here.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from decimal import Context, Decimal
 from fractions import Fraction
 
 import numpy as np
-from numpy.typing import NDArray
 
 from markov.chain import uniformisation
 from markov.chain.bounds import Floats, above
-from markov.chain.doubled import (
-    ADD,
-    DIVIDE,
-    MULTIPLY,
-    UNIT,
-    Doubled,
-    add,
-    difference,
-    divide,
-    multiply,
-    plain,
-    total,
-    total_error,
-    totals,
-)
+from markov.chain.doubled import UNIT, Doubled
 from markov.chain.generator import Generator
-from markov.chain.hub import Hub, with_likely_hub
+from markov.chain.shape import Shape, shape_of
 from markov.errors import NotReached
 
 _DECIMALS = Context(prec=120)
-_ROUNDS = 60
 #: Ends of the weights' relative spread at which the shape counts as settled.
 _SETTLED = 1e-13
 #: A result wider than this is not returned.
 WIDEST = 1e-6
-
-
-@dataclass(frozen=True, eq=False)
-class Shape:
-    """A vector that the chain keeps, up to a factor.
-
-    Attributes
-    ----------
-    members : int[k]
-        The states that it covers: one communicating class, every other weight being 0.
-    weights : float64[k]
-        The vector y, positive, as the floats nearest to the verified double-doubles.
-    slowest, fastest : Fraction
-        theta_lo and theta_hi: the vector decays at rates between these.
-    """
-
-    members: NDArray[np.int64]
-    weights: Floats
-    slowest: Fraction
-    fastest: Fraction
-
-
-def shape_of(chain: Generator, loss: Doubled, loss_error: float, likely: int, longest: Fraction) -> Shape:
-    """Return the quasi-stationary shape of the class of a likely state, verified.
-
-    Parameters
-    ----------
-    chain : Generator
-        n states.
-    loss : Doubled[n]
-        Rate of absorption, relative error `loss_error`.
-    likely : int
-        A state of the class, preferably the one where the chain mostly is.
-    longest : Fraction
-        For how long the shape will be followed; it is refined until the decay is known to ``1e-15 / longest``.
-
-    Raises
-    ------
-    NotReached
-        The refinement stalls, or the class can be left for other states that do not absorb.
-    """
-    _, label = chain.classes()
-    members = np.flatnonzero(label == label[likely])
-    if members.size < 2:
-        raise NotReached("the chain never returns to where it is: there is no shape to settle into")
-    outside = np.where(label == label[likely], -1, 0)
-    part = chain.restricted(members, outside, 1)
-    if part.absorption.high.any():
-        raise NotReached("the chain drains from its usual states into others that it keeps: no shape settles")
-    guess = int(np.flatnonzero(members == likely)[0])
-    hub = with_likely_hub(part.chain, loss.at(members), loss_error, guess)
-    off, _ = hub.excursion
-    target = 1e-15 / max(float(longest), 1e-300)
-    best: tuple[Fraction, Fraction] | None = None
-    kept = off
-    for _ in range(_ROUNDS):
-        ends = _collatz(hub, off)
-        if best is None or ends[1] - ends[0] < best[1] - best[0]:
-            stalled = best is not None and ends[1] - ends[0] > (best[1] - best[0]) / 2
-            best, kept = ends, off
-        else:
-            stalled = True
-        if stalled or float(best[1] - best[0]) <= target:
-            break
-        off = _improved(hub, off)
-    assert best is not None
-    if float(best[1] - best[0]) * float(longest) > 1e-7:
-        raise NotReached("the quasi-stationary shape could not be refined far enough")
-    weights = np.empty(members.size)
-    weights[hub.others] = kept.high + kept.low
-    weights[hub.number] = 1.0
-    if weights.min() < 1e-250:
-        raise NotReached("the quasi-stationary shape underflows")
-    return Shape(members, weights, *best)
-
-
-def _decay(hub: Hub, off: Doubled) -> Doubled:
-    """Estimate theta: absorption per unit of time spent anywhere."""
-    leave = add(hub.loss.at(hub.number), total(multiply(off, hub.loss.at(hub.others))))
-    return divide(leave, add(plain(1.0), total(off)))
-
-
-def _improved(hub: Hub, off: Doubled) -> Doubled:
-    """Return one step of refinement of ``off (D - theta - N) = q`` with the solver for theta = 0."""
-    flow, solver = hub.row
-    exits = difference(flow.exits, _decay(hub, off))
-    rest, _ = replace(flow, exits=exits).residual(off, hub.outward, 0.0)
-    change = solver.solve(np.maximum(rest, 0.0)) - solver.solve(np.maximum(-rest, 0.0))
-    changed = add(off, plain(change))
-    good = changed.high > 0.0
-    return Doubled(np.where(good, changed.high, off.high), np.where(good, changed.low, off.low))
-
-
-def _collatz(hub: Hub, off: Doubled) -> tuple[Fraction, Fraction]:
-    """Return proven bounds of ``-(y Q)_j / y_j`` over all states j, for y = (1 at the hub, off)."""
-    flow, _ = hub.row
-    error = flow.rate_error + MULTIPLY + total_error(int(flow.degree.max(initial=0)) + 1) + 2 * ADD + DIVIDE
-    inflow = add(hub.outward, totals(multiply(off.at(flow.tail), flow.rates), flow.head, flow.m))
-    per = divide(inflow, off)
-    rates = difference(flow.exits, per)
-    margin = per.high * (error + 2 * ADD) + flow.exits.high * (flow.exit_error + 2 * ADD)
-    values = rates.high + rates.low
-    margin = margin * (1.0 + 1e-9) + np.abs(values) * 4 * UNIT
-    low, high = values - margin, values + margin
-    back = total(multiply(off, hub.inward))
-    exits = add(hub.chain.exits.at(hub.number), hub.loss.at(hub.number))
-    here = exits.fraction() - back.fraction()
-    own = max(hub.chain.exit_error, hub.loss_error) + ADD
-    wide = exits.fraction() * Fraction(own) + back.fraction() * Fraction(
-        2 * (MULTIPLY + total_error(flow.m) + hub.inward_error)
-    )
-    wide *= 1 + Fraction(1, 10**9)
-    lowest, highest = float(low.min(initial=math.inf)), float(high.max(initial=-math.inf))
-    down = Fraction(math.nextafter(lowest, -math.inf)) if flow.m else here - wide
-    up = Fraction(math.nextafter(highest, math.inf)) if flow.m else here + wide
-    return min(here - wide, down), max(here + wide, up)
 
 
 @dataclass(frozen=True, eq=False)
@@ -246,7 +110,7 @@ def follow(
         if len(found) == len(times):
             break
         if shape is None and step.rate * float(now) >= 60.0:
-            shape = shape_of(chain, loss, loss_error, int(np.argmax(state.weights)), max(times))
+            shape = shape_of(chain, loss, loss_error, int(np.argmax(state.weights)), max(times), "row")
         if shape is not None:
             low, high, left = _ends(shape, state)
             # Settled to the proven error of the weights, or to what no float shows.
@@ -258,10 +122,14 @@ def follow(
                         )
                 break
             apart = high / low - 1.0 if low > 0.0 else math.inf
-            # Twice the time without coming closer: a slow mode, as of nearly uncoupled parts, that would take forever.
-            idle = idle + 1 if math.isfinite(apart) and apart > 0.9 * past else 0
+            # Twice the time and at best half the distance, three times running: a slow mode, as of nearly uncoupled
+            # parts, that fills at a constant rate.  If filling it alone is out of reach there is no use in going on.
+            idle = idle + 1 if math.isfinite(apart) and apart > 0.4 * past else 0
             past = apart
-            if idle >= 2 and left <= _negligible(state):
+            ahead = step.rate * float(now) * max(apart, 1.0)
+            if idle >= 3 and (
+                ahead * step.roundings * UNIT > 0.1 * WIDEST or ahead * (step.work + 10_000) > uniformisation.MOST_WORK
+            ):
                 raise NotReached(f"weights stay {apart:.2g} away from the settled shape: parts are nearly uncoupled")
         span = now
     return [found[number] for number in range(len(times))]
@@ -364,3 +232,57 @@ def _mean_fading(x: Fraction) -> tuple[Fraction, Fraction]:
     low, high = _fading(x)
     ends = ((1 - high) / x, (1 - low) / x)
     return min(ends), max(ends)
+
+
+def look_back(chain: Generator, loss: Doubled, loss_error: float, time: Fraction) -> tuple[Floats, float, float]:
+    """Return from each state the probability of not being absorbed within a time, with relative and absolute error.
+
+    Parameters
+    ----------
+    chain : Generator
+        n states, one communicating class.
+    loss : Doubled[n]
+        Rates of absorption, relative error `loss_error`.
+    time : Fraction
+        Exact, positive.
+
+    Raises
+    ------
+    NotReached
+        As `follow`; or the states are several classes.
+    """
+    step = uniformisation.jumps(chain, loss, backwards=True)
+    values, relative, absolute = np.ones(chain.n), 0.0, 0.0
+    now, span = Fraction(0), Fraction(64) / Fraction(step.rate)
+    shape: Shape | None = None
+    work = 0.0
+    while now < time:
+        span = min(span, time - now)
+        work += (step.rate * float(span) + 200.0) * (step.work + 10_000)
+        if work > uniformisation.MOST_WORK or step.rate * float(now + span) * step.roundings * UNIT > 0.1 * WIDEST:
+            raise NotReached(
+                f"survival has not settled after {step.rate * float(now):.3g} expected jumps of {chain.n} states"
+            )
+        values, more, off = uniformisation.look_back(step, values, span)
+        relative, absolute = (relative + more) * (1.0 + 1e-6), (absolute + off) * (1.0 + 1e-6)
+        now += span
+        span = now
+        if now < time and shape is None:
+            shape = shape_of(chain, loss, loss_error, int(np.argmax(values)), time, "column")
+            if shape.members.size < chain.n:
+                raise NotReached("the states that must not be left are several classes: survival does not settle")
+        if now < time and shape is not None:
+            low, high, _ = _ends(shape, Moment(values, np.zeros(0), relative, absolute, 0.0, 0.0))
+            if low > 0.0 and high / low - 1.0 <= 3.0 * relative + _SETTLED:
+                found = _followed(
+                    shape,
+                    Moment(values, np.zeros(0), relative, absolute, 0.0, 0.0),
+                    np.zeros((chain.n, 0)),
+                    0.0,
+                    time - now,
+                    low,
+                    high,
+                    0.0,
+                )
+                return found.weights, found.relative, found.absolute
+    return values, relative, absolute

@@ -6,8 +6,8 @@ The method is chosen by size and by the number of expected jumps:
 method                      where                                                  bound
 ==========================  =====================================================  =====================
 `ladder`                    up to `LADDER_ALWAYS` states; more if time allows      1e-15, any time
-`uniformisation`            any size, few expected jumps (about 1e5)               1e-9 and better
-`settling`                  any size and time, if the chain settles within reach   1e-9 and better
+`uniformisation`            any size, few expected jumps (about 1e5)               1e-7 and better
+`settling`                  any size and time, if the chain settles within reach   1e-7 and better
 `squaring`                  up to 1,000 states                                     none: an estimate
 ==========================  =====================================================  =====================
 
@@ -316,7 +316,7 @@ class _Run:
         chosen.append("settling")
         if seconds <= LADDER_PATIENCE:
             chosen.append("ladder")
-        if uniformisation.affordable(step, self.times):
+        if uniformisation.affordable(step, self.times, patient=True):
             chosen.append("uniformisation")
         if n + self.classes <= squaring.LARGEST_SQUARING:
             chosen.append("squaring")
@@ -456,29 +456,17 @@ def survival(generator: Generator, alive: ArrayLike, duration: Time, *, method: 
     # Only states with a path out matter; from the others survival is certain, and they count as leaks of no harm.
     mortal = np.flatnonzero(doomed & inside)
     part = generator.restricted(np.flatnonzero(inside), np.where(inside, -1, 0), 1)
-    final = np.ones(part.chain.n)
     loss = Doubled(part.absorption.high[:, 0], part.absorption.low[:, 0])
     expected = uniformisation.expected_jumps(part.chain, loss, time)
-    chosen = method
-    if chosen is None:
-        seconds = ladder_seconds(part.chain.n, expected)
-        step = uniformisation.jumps(part.chain, loss, backwards=True)
-        small = part.chain.n <= LADDER_ALWAYS or (
-            seconds <= LADDER_PATIENCE and not uniformisation.affordable(step, [time])
-        )
-        chosen = "ladder" if small else "uniformisation"
-    if chosen == "ladder":
-        prepared = ladder.build(
-            part.chain, loss, part.absorption_error, plain(np.zeros((part.chain.n, 0))), 0.0, [time]
-        )
-        found, relative, absolute = ladder.look_back(prepared, plain(final), time)
-        result, name = found.high + found.low, _ROUNDS
-    elif chosen == "uniformisation":
-        step = uniformisation.jumps(part.chain, loss, backwards=True)
-        result, relative, absolute = uniformisation.look_back(step, final, time)
-        name = _UNIFORM
+    reasons = []
+    for chosen in [method] if method else _survival_methods(part, loss, time, expected):
+        try:
+            result, relative, absolute = _surviving(part, loss, time, chosen)
+            break
+        except NotReached as reason:
+            reasons.append(f"{_NAMES[chosen]}: {reason}")
     else:
-        raise UsageError(f"method {chosen}: survival knows ladder and uniformisation")
+        raise NotReached("; ".join(dict.fromkeys(reasons)))
     values[part.members] = result
     certain = inside.copy()
     certain[mortal] = False
@@ -487,9 +475,40 @@ def survival(generator: Generator, alive: ArrayLike, duration: Time, *, method: 
         np.minimum(values, 1.0),
         relative_to_computed(relative + UNIT),
         absolute * (1.0 + 2.0 * relative) * (1.0 + 1e-9),
-        name,
+        _NAMES[chosen],
         inside,
     )
+
+
+def _survival_methods(part: Restriction, loss: Doubled, time: Fraction, expected: float) -> list[Method]:
+    """Methods worth trying for survival, the best first."""
+    n = part.chain.n
+    if n <= LADDER_ALWAYS:
+        return ["ladder"]
+    step = uniformisation.jumps(part.chain, loss, backwards=True)
+    quick = expected * step.roundings * UNIT < 1e-12 or (expected + 200.0) * (step.work + 10_000) < 1e8
+    chosen: list[Method] = ["uniformisation"] if quick and uniformisation.affordable(step, [time]) else []
+    if ladder_seconds(n, expected) < 3.0:
+        chosen.append("ladder")
+    chosen.append("settling")
+    if ladder_seconds(n, expected) < LADDER_PATIENCE:
+        chosen.append("ladder")
+    return [*chosen, "uniformisation"]
+
+
+def _surviving(part: Restriction, loss: Doubled, time: Fraction, method: Method) -> tuple[Floats, float, float]:
+    """Return survival from each state with its errors relative to the exact values, before rounding to floats."""
+    n = part.chain.n
+    if method == "ladder":
+        prepared = ladder.build(part.chain, loss, part.absorption_error, plain(np.zeros((n, 0))), 0.0, [time])
+        found, relative, absolute = ladder.look_back(prepared, plain(np.ones(n)), time)
+        return found.high + found.low, relative, absolute
+    if method == "uniformisation":
+        step = uniformisation.jumps(part.chain, loss, backwards=True)
+        return uniformisation.look_back(step, np.ones(n), time)
+    if method == "settling":
+        return settling.look_back(part.chain, loss, part.absorption_error, time)
+    raise UsageError(f"method {method}: survival knows ladder, uniformisation and settling")
 
 
 def flow(generator: Generator, leaving: ArrayLike, entering: ArrayLike) -> Vector:

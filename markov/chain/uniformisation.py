@@ -32,10 +32,12 @@ from markov.chain.generator import Generator
 from markov.chain.poisson import LongPoisson, long_poisson
 from markov.errors import NotReached
 
-#: A relative bound wider than this is not worth the work; the method then declines.
-WIDEST = 1e-9
-#: Elementary multiplications that one call may spend (about ten seconds).
+#: A relative bound up to this, and elementary multiplications up to this (about ten seconds), are spent gladly.
+NARROW = 1e-9
 MOST_WORK = 6e9
+#: Beyond these the method declines: nothing better being at hand, a wide bound or a minute of work is still a proof.
+WIDEST = 1e-7
+LAST_WORK = 3e10
 #: What truncating the Poisson weights may cost absolutely, about.
 _TRUNCATION = 1e-80
 _FAN = 16
@@ -134,11 +136,12 @@ def expected_jumps(chain: Generator, loss: Doubled | None, time: Fraction) -> fl
     return 1.02 * (float(exits.max()) if chain.n else 0.0) * float(time)
 
 
-def affordable(step: Jumps, times: Sequence[Fraction]) -> bool:
-    """Whether the bound is narrow enough and the work within limits at all of the times."""
+def affordable(step: Jumps, times: Sequence[Fraction], *, patient: bool = False) -> bool:
+    """Whether the bound is narrow enough and the work within limits at all of the times; patient: the last limits."""
+    widest, most = (WIDEST, LAST_WORK) if patient else (NARROW, MOST_WORK)
     x = step.rate * float(max(times))
     count = x + 20.0 * math.sqrt(x + 100.0) + 200.0
-    return count * step.roundings * UNIT < WIDEST and count * (step.work + 10_000) < MOST_WORK
+    return count * step.roundings * UNIT < widest and count * (step.work + 10_000) < most
 
 
 def _weights(step: Jumps, time: Fraction) -> LongPoisson:
@@ -173,7 +176,7 @@ def walk(
     NotReached
         Not `affordable`.
     """
-    if not affordable(step, times):
+    if not affordable(step, times, patient=True):
         raise NotReached(
             f"uniformisation of {step.rate * float(max(times)):.3g} expected jumps is too dear or too wide"
         )
@@ -216,7 +219,7 @@ def look_back(step: Jumps, final: Floats, time: Fraction) -> tuple[Floats, float
 
     `step` goes backwards.  Raises NotReached where not `affordable`.
     """
-    if not affordable(step, [time]):
+    if not affordable(step, [time], patient=True):
         raise NotReached(f"uniformisation of {step.rate * float(time):.3g} expected jumps is too dear or too wide")
     poisson = _weights(step, time)
     value = np.zeros_like(final)

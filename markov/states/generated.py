@@ -20,6 +20,7 @@ from markov.states.naming import island_label, join_labels
 from markov.states.plan import Plan, Pool, plan
 from markov.states.redundancy import critical
 from markov.states.space import Arrows, Mask, Values, no_such_state, structure
+from markov.states.symmetry import Classes, interchangeable, raw_count
 from markov.states.takeover import fill_by_rank
 
 
@@ -35,6 +36,12 @@ class GeneratedSpace:
     arrows: Arrows
     kinds: ArrowKinds
     start: tuple[tuple[int, Fraction], ...]
+    classes: Classes = ()
+
+    @cached_property
+    def raw_size(self) -> int:
+        """Number of states that the chain would have without merging interchangeable groups."""
+        return raw_count(self.columns, self.classes)
 
     @property
     def size(self) -> int:
@@ -194,13 +201,29 @@ class GeneratedSpace:
 
     def label(self, state: int) -> str:
         """Name of a state."""
-        parts = []
-        for island, chart in enumerate(self.charts):
+        parts: list[tuple[str, str]] = []
+        merged = {island: islands for islands in self.classes for island in islands}
+        told: set[tuple[int, int]] = set()
+        for island in range(len(self.charts)):
             local = int(self.columns[island, state])
-            column = [int(value) for value in chart.digits[:, local]]
-            text = island_label(chart.layout, column, _ordinary(chart.layout), alone=len(self.charts) == 1)
-            parts.append((chart.layout.node.name, text))
+            name, text = self.plan.islands[island].node.name, self._local_label(island, local)
+            if island in merged:
+                islands = merged[island]
+                if (islands[0], local) in told:
+                    continue
+                told.add((islands[0], local))
+                alike = int((self.columns[list(islands), state] == local).sum())
+                name = f"{alike} of {len(islands)} like {self.plan.islands[islands[0]].node.name}"
+                text = f"{name}[{text}]" if text else ""
+                parts.append(("", text))
+            else:
+                parts.append((name, text))
         return join_labels(parts, self._ambiguous)
+
+    def _local_label(self, island: int, local: int) -> str:
+        layout = self.plan.islands[island]
+        column = [int(value) for value in self.charts[island].digits[:, local]]
+        return island_label(layout, column, _ordinary(layout), alone=len(self.charts) == 1)
 
     @cached_property
     def _numbers(self) -> dict[str, int]:
@@ -252,7 +275,9 @@ def initial_digits(layout: Layout, failed: dict[str, int]) -> Digits:
     return x
 
 
-def generate(model: Model, subjects: tuple[str, ...] = (), *, limit: int = STATE_LIMIT) -> GeneratedSpace:
+def generate(
+    model: Model, subjects: tuple[str, ...] = (), *, limit: int = STATE_LIMIT, merge: bool = True
+) -> GeneratedSpace:
     """Generate the chain of a model with units and groups.
 
     Parameters
@@ -262,6 +287,8 @@ def generate(model: Model, subjects: tuple[str, ...] = (), *, limit: int = STATE
         Groups and units outside the system that a question asks about.
     limit : int
         Largest number of states.
+    merge : bool
+        Whether interchangeable groups are merged; false keeps every group apart, for checks and comparisons.
 
     Raises
     ------
@@ -271,20 +298,22 @@ def generate(model: Model, subjects: tuple[str, ...] = (), *, limit: int = STATE
     drawn = plan(model, subjects)
     kinds = ArrowKinds()
     contended = {unit.unit for pool in drawn.pools for unit in pool.kinds}
-    charts = tuple(
-        build_chart(
-            layout,
-            kinds,
-            initial_digits(layout, _initially_failed(model, layout)),
-            frozenset(number for number, slot in enumerate(layout.slots) if slot.unit not in contended),
-        )
-        for layout in drawn.islands
-    )
-    desk = CrewDesk(charts, drawn.pools)
+    starts = tuple(initial_digits(layout, _initially_failed(model, layout)) for layout in drawn.islands)
+    classes = interchangeable(drawn.islands, starts, model.system, frozenset(subjects)) if merge else ()
+    first = {island: islands[0] for islands in classes for island in islands}
+    charts: list[Chart] = []
+    for number, (layout, begin) in enumerate(zip(drawn.islands, starts, strict=True)):
+        if first.get(number, number) < number:
+            charts.append(charts[first[number]])  # alike in everything but the name
+            continue
+        local = frozenset(at for at, slot in enumerate(layout.slots) if slot.unit not in contended)
+        charts.append(build_chart(layout, kinds, begin, local))
+    desk = CrewDesk(tuple(charts), drawn.pools)
     island_of = {layout.node.name: number for number, layout in enumerate(drawn.islands)}
-    found = explore(charts, desk, kinds, model.system, island_of, limit=limit)
+    found = explore(tuple(charts), desk, kinds, model.system, island_of, classes=classes, limit=limit)
     start = tuple((state, Fraction(weight, choices)) for state, weight, choices in found.start)
-    return GeneratedSpace(drawn, charts, desk, Packing(charts), found.keys, found.arrows, kinds, start)
+    packing = Packing(tuple(charts))
+    return GeneratedSpace(drawn, tuple(charts), desk, packing, found.keys, found.arrows, kinds, start, classes)
 
 
 def _initially_failed(model: Model, layout: Layout) -> dict[str, int]:

@@ -19,6 +19,7 @@ from markov.states.arrows import ArrowKinds
 from markov.states.chart import Chart, Table
 from markov.states.crews import Columns, CrewDesk
 from markov.states.space import Arrows, structure
+from markov.states.symmetry import Classes, sort_alike
 
 Keys = NDArray[np.int64]
 
@@ -73,10 +74,6 @@ class Packing:
             rest, columns[island] = np.divmod(rest, size)
         return columns
 
-    def unpack_one(self, keys: Keys, island: int) -> NDArray[np.int32]:
-        """Return the local state numbers of one island, shape (m,)."""
-        return ((keys // self.strides[island]) % self.sizes[island]).astype(np.int32)
-
 
 def explore(
     charts: tuple[Chart, ...],
@@ -85,9 +82,21 @@ def explore(
     success: Success | None,
     island_of: dict[str, int],
     *,
+    classes: Classes = (),
     limit: int = STATE_LIMIT,
 ) -> Explored:
     """Explore the chain from its initial state.
+
+    Parameters
+    ----------
+    charts, desk, kinds, success
+        What acts on the states, what receives the arrow kinds, what makes a state an up state.
+    island_of : dict
+        Name -> number of the island, for the names of the structure.
+    classes : tuple of tuples of int
+        Interchangeable islands; states that differ by their order only are one state.
+    limit : int
+        Largest number of states.
 
     Raises
     ------
@@ -105,9 +114,13 @@ def explore(
         return structure(success, lambda name: deliver[island_of[name]][columns[island_of[name]]])
 
     first = np.array([[chart.start] for chart in charts], np.int32)
-    shares = desk.assign(first)
     start = tuple(
-        (int(numbering.number(packing.pack(share.columns))[0]), int(share.weight[0]), share.choices) for share in shares
+        (
+            int(numbering.number(packing.pack(sort_alike(share.columns, classes)))[0]),
+            int(share.weight[0]),
+            share.choices,
+        )
+        for share in desk.assign(first)
     )
     source: list[NDArray[np.int32]] = []
     target: list[NDArray[np.int32]] = []
@@ -119,7 +132,7 @@ def explore(
         columns = packing.unpack(keys)
         is_up = up(columns) if modes - {"always"} else None
         for found in _chunk(charts, desk, packing, keys, columns, is_up):
-            for part in _assigned(found, desk, packing, kinds) if desk.assigns else (found,):
+            for part in _settled(found, desk, packing, kinds, classes):
                 source.append((part.row + done).astype(np.int32))
                 target.append(numbering.number(part.key))
                 kind.append(part.kind)
@@ -182,15 +195,22 @@ def _expand(
             yield _Found(row, key, layer.kind[here], layer.multiple[here])
 
 
-def _assigned(found: _Found, desk: CrewDesk, packing: Packing, kinds: ArrowKinds) -> Iterator[_Found]:
-    """Let the crews move on after the events of one batch."""
+def _settled(found: _Found, desk: CrewDesk, packing: Packing, kinds: ArrowKinds, classes: Classes) -> Iterator[_Found]:
+    """Let the crews move on after the events of one batch, and take the representative of each state reached."""
+    if not desk.assigns:
+        if classes:
+            key = packing.pack(sort_alike(packing.unpack(found.key), classes))
+            yield _Found(found.row, key, found.kind, found.multiple)
+        else:
+            yield found
+        return
     for share in desk.assign(packing.unpack(found.key)):
         kind = found.kind[share.row]
         if share.choices > 1:
             each, where = np.unique(kind, return_inverse=True)
             kind = np.array([kinds.shared(int(number), share.choices) for number in each], np.int32)[where]
         weight = (found.multiple[share.row] * share.weight).astype(np.int32)
-        yield _Found(found.row[share.row], packing.pack(share.columns), kind, weight)
+        yield _Found(found.row[share.row], packing.pack(sort_alike(share.columns, classes)), kind, weight)
 
 
 class _TableNumbering:

@@ -133,3 +133,34 @@ def test_an_estimate_is_marked_as_one(pair):
     for number in (found.states[0].entry(1), found.integrals[0].entry(0), found.states[0].weighted([0, 0, 1, 0])):
         assert number.lower is None
         assert number.upper is None
+
+
+def test_products_of_rates_that_underflow_are_refused():
+    chain = room.aggregate(
+        4, [0, 1, 2, 3, 1, 2, 3], [1, 2, 3, 0, 0, 1, 2], [1e-140, 1e-140, 1e-140, 1.0, 1.0, 1.0, 1.0]
+    )
+    with pytest.raises(NotReached, match="digits are lost"):
+        room.first_passage(chain, 0, [3])
+    wide = room.aggregate(2, [0, 1], [1, 0], [1e-140, 1e140])
+    with pytest.raises(NotReached, match="orders of magnitude"):
+        room.transient(wide, 0, [1.0])
+
+
+def test_a_chain_without_any_exit_stays_where_it_is():
+    still = room.aggregate(2, [1], [0], [1.0])
+    found = room.transient(still, 0, [10**6], [np.ones(2)])
+    assert ends(found.states[0].entry(0)) == ONE
+    assert found.integrals[0].entry(0).lower <= 10**6 <= found.integrals[0].entry(0).upper
+    assert ends(room.long_run(still, 0).entry(0)) == ONE
+
+
+def test_a_start_spread_over_stopped_states_counts_them_at_once(pair):
+    start = np.array([0.5, 0.0, 0.25, 0.25])
+    found = room.transient(pair, start, [0, 50], absorbing=[-1, -1, 0, 1])
+    assert [found.absorbed[0].entry(number).value for number in (0, 1)] == [0.25, 0.25]
+    assert found.absorbed[1].entry(0).lower > 0.25
+    assert found.absorbed[1].entry(1).lower <= 0.25 <= found.absorbed[1].entry(1).upper
+    passage = room.first_passage(pair, start, [2, 3])
+    alone = room.first_passage(pair, 0, [2, 3])
+    assert passage.mean.lower <= alone.mean.upper / 2
+    assert passage.mean.upper >= alone.mean.lower / 2

@@ -87,12 +87,16 @@ def test_absorption_is_contained(method):
     assert asked > 30
 
 
-@pytest.mark.parametrize("method", ["ladder", "uniformisation"])
+@pytest.mark.parametrize("method", ["ladder", "uniformisation", "settling"])
 def test_survival_of_a_duration_is_contained_from_every_state(method):
     asked = 0
     for chain in families.some(36, seed=23):
-        for time in suited(chain, method)[:1]:
-            found = room.survival(chain.generator(), ~chain.down_flags, time, method=method)
+        for time in suited(chain, method)[-1 if method == "settling" else 0 :][:1]:
+            try:
+                found = room.survival(chain.generator(), ~chain.down_flags, time, method=method)
+            except NotReached:
+                assert method == "settling"
+                continue
             truth = balls.exponential(chain, time, stopped=chain.down)
             alive = [state for state in range(chain.n) if state not in chain.down]
             for state in alive:

@@ -224,10 +224,7 @@ class Plant:
         number = self.numbers[name]
         if moment.orders[number] == LOST:
             return Fraction(0)
-        import os
-        if os.environ.get("T4") and self.active(name) and len(self.good_of(moment,name))<self.required(name) and not (moment.orders[number]==OUT and self.outcome(name)=="restart"):
-            pass
-        elif self.active(name) and (moment.orders[number] == OUT or moment.switchovers[number]):
+        if self.active(name) and (moment.orders[number] == OUT or moment.switchovers[number]):
             return Fraction(0)
         usual = Fraction(1, self.required(name))
         carried = self.having(moment, name, DUTY)
@@ -339,8 +336,6 @@ class Rules:
         if before == WAITING:
             return [(ONE, after)]
         if before[0] == STARTING:  # "a unit lost meanwhile begins a new attempt with full time, without a new draw"
-            import os
-            if os.environ.get("T3") and moment.orders[self.plant.numbers[group]] != NORMAL: return [(ONE, after)]
             return self.start_one(after, group, timed=True)
         if moment.orders[self.plant.numbers[group]] != NORMAL:  # "further duty faults leave their places empty"
             return [(ONE, after)]
@@ -451,28 +446,7 @@ class Rules:
             )
 
         changed = evenly([item for item in waiting if rank[item] == first], attempt)
-        if self.once: return changed
         return then(changed, lambda after: self.back_to_preferred(after, group))
-
-    def engine_return(self, moment, group):
-        if not moment.repaired or self.plant.items[moment.repaired[0]].group != group or self.source.orders[self.plant.numbers[group]] != NORMAL:
-            return [(ONE, moment)]
-        kind = self.plant.items[moment.repaired[0]].kind
-        hidden = [i for i in self.plant.of(group) if moment.conditions[i] == WAITING and self.plant.items[i].kind != kind]
-        masked = moment
-        for i in hidden:
-            masked = masked.put(i, BROKEN)
-        self.once = True
-        out = self.back_to_preferred(masked, group)
-        self.once = False
-        res = []
-        for p, m in out:
-            for i in hidden:
-                m = m.put(i, WAITING)
-            res.append((p, m))
-        return res
-
-    once = False
 
     def switchover_step(self, moment: Moment, item: int) -> Chances:
         """A unit being switched in passes a stage."""
@@ -502,9 +476,7 @@ class Rules:
         if outcome == "restart":
             return [(ONE, self.as_new(over, group))]
         if self.plant.active(group):
-            import os
-            if os.environ.get("T1"): return [(ONE, over)]
-            return [(ONE, over.switching(number, ()))]
+            return [(ONE, over.switching(number, ()))]  # "the good units are re-admitted"
         if outcome == "manual_takeover":
             return self.start_all(over, group, timed=False)
         return self.fill_without_attempts(self.give_up_starts(over, group), group)
@@ -650,7 +622,6 @@ class Rules:
     # -- all together
 
     def events(self, moment: Moment) -> Iterator[tuple[Fraction, Chances]]:
-        self.source = moment
         """Yield every event that is possible in a state: its rate, where it leads before crews are sent."""
         for item, condition in enumerate(moment.conditions):
             unit = self.plant.unit(item)
@@ -677,17 +648,15 @@ class Rules:
 
     def finish(self, chances: Chances) -> Chances:
         """What follows on every event: duty goes back to preferred members, crews are sent."""
-        import os
         for group in self.plant.groups:
-            if os.environ.get("T2"):
-                chances = then(chances, lambda moment: self.engine_return(moment, group))
-            else:
-                chances = then(chances, lambda moment: self.back_to_preferred(moment, group))  # noqa: B023
+            chances = then(chances, lambda moment: self.back_to_preferred(moment, group))  # noqa: B023
         return then(chances, self.assign_crews)
 
     def first(self) -> Chances:
         """The state at the start; several where the first crew is sent by chance."""
-        moment = Moment((DUTY,) * len(self.plant.items), (NORMAL,) * len(self.plant.groups), ((),) * len(self.plant.groups))
+        moment = Moment(
+            (DUTY,) * len(self.plant.items), (NORMAL,) * len(self.plant.groups), ((),) * len(self.plant.groups)
+        )
         for group in self.plant.groups:
             failed = [item for item in self.plant.of(group) if self._fails_at_start(item)]
             for item in self.plant.of(group):
@@ -702,6 +671,8 @@ class Rules:
 
     def _fails_at_start(self, item: int) -> bool:
         each = self.plant.items[item]
+        if self.plant.renewed_at_once(item):
+            return False
         alike = [number for number, other in enumerate(self.plant.items) if other == each]
         places = {other.group for other in self.plant.items if other.kind == each.kind}
         number = self.plant.initial.get(f"{each.group}.{each.kind}", 0)
@@ -719,7 +690,9 @@ class Chain:
     start: dict[Moment, Fraction]
     states: dict[Moment, int]
     rates: dict[Moment, dict[Moment, Fraction]]
-    happening: dict[str, dict[Moment, Fraction]] = field(default_factory=lambda: defaultdict(lambda: defaultdict(Fraction)))
+    happening: dict[str, dict[Moment, Fraction]] = field(
+        default_factory=lambda: defaultdict(lambda: defaultdict(Fraction))
+    )
 
     def values(self, of: Callable[[Moment], Any]) -> NDArray[np.float64]:
         """Return one number for each state."""
@@ -851,6 +824,21 @@ def stationary(off: NDArray[np.float64]) -> NDArray[np.float64]:
     return weights / weights.sum()
 
 
+def mean_time_up(generator: NDArray[np.float64], first: NDArray[np.float64], up: NDArray[np.bool_]) -> float:
+    """Return the mean time to the first down state; infinite where it may never come."""
+    leads = generator > 0
+    met = (first > 0) & up  # reached before any failure
+    for _ in up:
+        met = met | (leads[met].any(axis=0) & up)
+    fails = ~up  # from here a failure comes
+    for _ in up:
+        fails = fails | leads[:, fails].any(axis=1)
+    if not fails[met].all():
+        return float("inf")
+    inner = generator[np.ix_(met, met)]
+    return float(np.linalg.solve(-inner, np.ones(len(inner))) @ first[met])
+
+
 def numbers(
     generator: NDArray[np.float64],
     first: NDArray[np.float64],
@@ -860,8 +848,7 @@ def numbers(
 ) -> dict[str, float]:
     """Return all numbers of a chain that are compared, by name.
 
-    Only probability mass is summed, so that small numbers keep their digits; a mean time to a failure that may never
-    come is left out.
+    Only probability mass is summed, so that small numbers keep their digits.
     """
     steady = long_run(generator, first)
     falling = np.where(up, np.where(up, 0.0, generator).sum(axis=1), 0.0)
@@ -871,10 +858,7 @@ def numbers(
         "failure frequency": steady @ falling,
         **{f"{name} in the long run": steady @ reward for name, reward in rewards.items()},
     }
-    inner = generator[np.ix_(up, up)]
-    can_last = not up.all() and np.linalg.matrix_rank(inner) == len(inner)
-    if can_last:
-        result["mean time to first failure"] = np.linalg.solve(-inner, np.ones(len(inner))) @ first[up]
+    result["mean time to first failure"] = mean_time_up(generator, first, up)
     absorbing = np.where(up[:, None], generator, 0.0)
     for time in times:
         result[f"unreliability at {time}"] = first @ expm(absorbing * time) @ ~up

@@ -136,9 +136,7 @@ def of_engine(spec: Spec) -> dict[str, float]:
     space = generate(Model.from_mapping(as_mapping(spec)), tuple(outside))
     matrix = np.zeros((space.size, space.size))
     arrows = space.arrows
-    for source, target, kind, multiple in zip(
-        arrows.source, arrows.target, arrows.kind, arrows.multiple, strict=True
-    ):
+    for source, target, kind, multiple in zip(arrows.source, arrows.target, arrows.kind, arrows.multiple, strict=True):
         if source != target:
             matrix[source, target] += float(space.kinds.rates.rates[space.kinds.kinds[kind].rate].exact) * multiple
     matrix -= np.diag(matrix.sum(axis=1))
@@ -166,7 +164,7 @@ def disagreements(spec: Spec, engine: Mapping[str, float], oracle: Mapping[str, 
         if ":" in name and name.split(":")[0] not in known:
             continue
         ours, theirs = engine.get(name, 0.0), oracle.get(name, 0.0)
-        if abs(ours - theirs) > 1e-9 * abs(theirs) + 1e-15:
+        if ours != theirs and abs(ours - theirs) > 1e-9 * abs(theirs) + 1e-15:
             found.append(f"{name}: engine {ours!r}, oracle {theirs!r}")
     return found
 
@@ -262,7 +260,9 @@ def draw_group(rng: random.Random, members: list[tuple[str, int]]) -> dict[str, 
     if size == 1:
         return group
     if rng.random() < 0.7:
-        group["coverage"] = [Fraction(rng.choice(["0.6", "0.9", "0.8", "1", "0"])) for _ in range(rng.choice([1, 1, 2]))]
+        group["coverage"] = [
+            Fraction(rng.choice(["0.6", "0.9", "0.8", "1", "0"])) for _ in range(rng.choice([1, 1, 2]))
+        ]
         outcome = rng.choice(
             ["until_repair", "manual_takeover", "restart", "restart_without_failed", "all_failed", "lost"] * 3
             + ["manual_takeover", "restart_without_failed", "until_repair"] * 3
@@ -304,7 +304,9 @@ def draw_success(rng: random.Random, named: list[str]) -> Any:
 
 def draw_initial(rng: random.Random, spec: Spec) -> dict[str, int]:
     """Draw units that are failed at the start."""
-    places = [(f"{name}.{kind}", kind, count) for name, group in spec["groups"].items() for kind, count in group["members"]]
+    places = [
+        (f"{name}.{kind}", kind, count) for name, group in spec["groups"].items() for kind, count in group["members"]
+    ]
     grouped = {kind for _, kind, _ in places}
     places += [(kind, kind, 1) for kind in names(spec["system"]) if kind in spec["units"] and kind not in grouped]
     possible = [(key, count) for key, kind, count in places if spec["units"][kind].get("repair_time")]

@@ -107,7 +107,7 @@ groups:
 crews: {crew: {size: 1, repairs: [pump]}}
 system: {any_of: [left, right]}
 """
-    space = space_of(text)
+    space = generate(read_text(text, "spec"), merge=False)
     assert sorted(labels(space)) == [
         "all good",
         "left[pump: in repair]",
