@@ -88,6 +88,8 @@ class Solution:
         Of the spec and of the program that solved it.
     states, transitions : int
         Size of the chain that was solved: states, distinct arrows.
+    raw_states : int
+        States before interchangeable groups were merged.
     year_hours : Fraction
         Hours in a year, as every per-year figure uses them.
     results : tuple of Result
@@ -103,6 +105,7 @@ class Solution:
     version: str
     states: int
     transitions: int
+    raw_states: int
     year_hours: Fraction
     results: tuple[Result, ...]
     targets: tuple[TargetResult, ...]
@@ -142,5 +145,6 @@ class Check:
     version: str
     states: int
     transitions: int
+    raw_states: int
     assumptions: tuple[str, ...]
     warnings: tuple[str, ...]

@@ -78,6 +78,7 @@ def solve_model(
         version=__version__,
         states=space.size,
         transitions=answers.arrow_count,
+        raw_states=_raw_size(space),
         year_hours=model.year_hours,
         results=tuple(results.values()),
         targets=targets,
@@ -114,6 +115,10 @@ def _result(model: Model, answers: Answers, question: Question) -> Result:
     )
 
 
+def _raw_size(space: StateSpace) -> int:
+    return space.raw_size if isinstance(space, GeneratedSpace) else space.size
+
+
 def _can_fail(answers: Answers, of: str | None) -> bool:
     """Tell whether a subject can go down; a crew pool, or a kind of several items, has no down state of its own."""
     try:
@@ -133,6 +138,7 @@ def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
         __version__,
         space.size,
         Answers(space, model.year_hours).arrow_count,
+        _raw_size(space),
         unsaid_choices(model, plan),
         model.warnings,
     )

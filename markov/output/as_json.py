@@ -22,6 +22,7 @@ def solution_object(solution: Solution) -> dict[str, Any]:
         "version": solution.version,
         "states": solution.states,
         "transitions": solution.transitions,
+        "raw_states": solution.raw_states,
         "year_hours": _number(solution.year_hours),
         "results": [_result(result) for result in solution.results],
         "targets": [_target(target) for target in solution.targets],
@@ -38,6 +39,7 @@ def check_json(check: Check) -> str:
         "version": check.version,
         "states": check.states,
         "transitions": check.transitions,
+        "raw_states": check.raw_states,
         "assumptions": list(check.assumptions),
         "warnings": list(check.warnings),
     }

@@ -5,7 +5,15 @@ from __future__ import annotations
 from collections.abc import Sequence
 from html import escape
 
-from markov.output.wording import CAUTIONS, bound_words, measure_words, timing_words, unit_words, value_words
+from markov.output.wording import (
+    CAUTIONS,
+    bound_words,
+    measure_words,
+    size_words,
+    timing_words,
+    unit_words,
+    value_words,
+)
 from markov.results import Result, Solution
 
 
@@ -13,7 +21,7 @@ def solution_html(solution: Solution) -> str:
     """Return tables of targets and results, the unsaid choices and the cautions as one HTML fragment."""
     parts = [
         f"<h4>{escape(solution.title or solution.source_name)}</h4>",
-        f"<p>{solution.states:,} states, {solution.transitions:,} transitions; "
+        f"<p>{size_words(solution.states, solution.transitions, solution.raw_states)}; "
         f"a year is {float(solution.year_hours):g} h; spec {solution.sha256[:12]}; markov {solution.version}</p>",
     ]
     if solution.targets:

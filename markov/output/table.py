@@ -13,6 +13,7 @@ from markov.output.wording import (
     CAUTIONS,
     bound_words,
     measure_words,
+    size_words,
     timing_words,
     unit_words,
     value_words,
@@ -47,7 +48,7 @@ def print_solution(solution: Solution, console: Console) -> None:
     """Print a solution on a console."""
     console.print(Text(solution.title or solution.source_name, style="bold"))
     console.print(
-        f"{solution.states:,} states, {solution.transitions:,} transitions; a year is "
+        f"{size_words(solution.states, solution.transitions, solution.raw_states)}; a year is "
         f"{float(solution.year_hours):g} h; spec {solution.sha256[:12]}; markov {solution.version}",
         style="dim",
     )
@@ -72,7 +73,8 @@ def print_check(check: Check, console: Console) -> None:
     """Print what `markov check` found on a console."""
     console.print(Text(check.title or check.source_name, style="bold"))
     console.print(
-        f"{check.states:,} states, {check.transitions:,} transitions; spec {check.sha256[:12]}; markov {check.version}",
+        f"{size_words(check.states, check.transitions, check.raw_states)}; "
+        f"spec {check.sha256[:12]}; markov {check.version}",
         style="dim",
     )
     console.print("The spec is in order; nothing was solved.")

@@ -46,6 +46,12 @@ def hours_words(hours: Fraction | None) -> str:
     return f"{int(hours):,} h".replace(",", " ") if hours.denominator == 1 else f"{float(hours):.6g} h"
 
 
+def size_words(states: int, transitions: int, raw_states: int) -> str:
+    """Return the size of a chain, with its size before interchangeable groups were merged."""
+    merged = f" (merged from {raw_states:,}, groups that are alike)" if raw_states != states else ""
+    return f"{states:,} states{merged}, {transitions:,} transitions"
+
+
 def value_words(measure: str, value: float | None, digits: int = 6) -> str:
     """Return a value with the digits that tell: of the distance from one where the value is meant to be near one."""
     if value is None:
