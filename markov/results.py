@@ -31,6 +31,8 @@ class Result:
     method : str
         How the number was obtained.
     reason : str or None
+    reached : bool
+        False where an answer exists but no method came to it.
     """
 
     measure: str
@@ -44,6 +46,7 @@ class Result:
     unit: str
     method: str
     reason: str | None = None
+    reached: bool = True
 
     @property
     def is_proven(self) -> bool:
@@ -114,10 +117,10 @@ class Solution:
 
     @property
     def exit_status(self) -> int:
-        """Return 0 if all targets are met, 1 if one is missed, 3 if one is undecided and none missed."""
+        """Return 0 if all targets are met, 1 if one is missed, else 3 if one is undecided or a result out of reach."""
         if any(target.satisfied is False for target in self.targets):
             return 1
-        if any(target.satisfied is None for target in self.targets):
+        if any(target.satisfied is None for target in self.targets) or not all(each.reached for each in self.results):
             return 3
         return 0
 

@@ -88,7 +88,7 @@ def solve_model(
 
 
 def _result(model: Model, answers: Answers, question: Question) -> Result:
-    found, reason = None, None
+    found, reason, reached = None, None, True
     try:
         if question.measure in GAINS:
             found = gain(model, answers, question)
@@ -99,7 +99,7 @@ def _result(model: Model, answers: Answers, question: Question) -> Result:
     except IllPosed as error:
         reason = error.reason
     except NotReached as error:
-        reason = f"not reached: {error}"
+        reason, reached = f"not reached: {error}", False
     return Result(
         measure=question.measure,
         of=question.of,
@@ -112,6 +112,7 @@ def _result(model: Model, answers: Answers, question: Question) -> Result:
         unit=question.asked.unit,
         method="none" if found is None else found.method,
         reason=reason,
+        reached=reached,
     )
 
 

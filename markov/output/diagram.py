@@ -179,7 +179,7 @@ class StateDiagram:
         word = "boxes" if any(node.holds for node in self.nodes) else "states"
         return (
             f"State diagram: {len(self.nodes)} {word} ({', '.join(counts)}), ordered from left to right by the number "
-            f"of {self.columns}; {faults} fault arrows and {restorations} restoration arrows, each with its rate formula."
+            f"of {self.columns}; {faults} fault arrows and {restorations} restoration arrows, each with its formula."
         )
 
 
