@@ -14,6 +14,7 @@ where no method meets its bound; a last iterate is never returned.
 """
 
 from markov.chain.bounds import Enclosure, Vector, distribution, point
+from markov.chain.flow import flow
 from markov.chain.generator import Generator, aggregate
 from markov.chain.solve import (
     FirstPassage,
@@ -24,7 +25,8 @@ from markov.chain.solve import (
     stationary,
     time_spent,
 )
-from markov.chain.transient import Transient, flow, survival, transient
+from markov.chain.survival import survival
+from markov.chain.transient import Transient, transient
 
 __all__ = [
     "Enclosure",

@@ -9,7 +9,6 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy.sparse import coo_array, csr_array
-from scipy.sparse.csgraph import connected_components
 
 from markov.chain.bounds import Flags, Floats
 from markov.chain.doubled import Doubled, total_error, totals, two_sum
@@ -115,6 +114,8 @@ class Generator:
 
     def classes(self) -> tuple[int, Numbers]:
         """Return the number of communicating classes with the class of each state."""
+        from scipy.sparse.csgraph import connected_components  # late: it takes long to import
+
         pattern = csr_array(
             (np.ones(self.source.size, dtype=np.int8), self.target, self.pointers), shape=(self.n, self.n)
         )

@@ -17,6 +17,9 @@ is an absolute error.
 The number of steps is about 30 times the fastest rate over the slowest repair rate.  Chains whose parts are nearly
 uncoupled do not settle in reach; the method then declines.
 
+Integrals over a long time are narrower than that: mass is conserved, so an error of the weights matters only until
+the next visit to a likely state (`markov.chain.guard`).
+
 Survival of a duration is the same with column vectors: values per state in place of weights.
 
 Source: derived here.
@@ -26,7 +29,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from decimal import Context, Decimal
 from fractions import Fraction
 
@@ -36,6 +39,7 @@ from markov.chain import uniformisation
 from markov.chain.bounds import Floats, above
 from markov.chain.doubled import UNIT, Doubled
 from markov.chain.generator import Generator
+from markov.chain.guard import guard
 from markov.chain.shape import Shape, shape_of
 from markov.errors import NotReached
 
@@ -48,13 +52,16 @@ WIDEST = 1e-6
 
 @dataclass(frozen=True, eq=False)
 class Moment:
-    """Weights, absorption and integrals at one time; errors relative to the exact values."""
+    """Weights of n states with c integrals at one time; errors relative to the exact values.
+
+    The weights share one relative error and an absolute one of their sum; each integral has its own relative error.
+    """
 
     weights: Floats
     integrals: Floats
     relative: float
     absolute: float
-    integrals_relative: float
+    integrals_relative: Floats
     integrals_absolute: float
 
 
@@ -66,6 +73,7 @@ def follow(
     rewards: Floats,
     rewards_error: float,
     times: Sequence[Fraction],
+    classes: int = 0,
 ) -> list[Moment]:
     """Return weights of n states with integrals of c rewards at each time.
 
@@ -79,6 +87,8 @@ def follow(
         Relative error `rewards_error`.
     times : Fraction[m]
         Exact, positive.
+    classes : int
+        How many of the rewards, the first ones, are the absorption rates into classes; together they are `loss`.
 
     Raises
     ------
@@ -89,7 +99,8 @@ def follow(
     order = sorted(range(len(times)), key=lambda number: times[number])
     found: dict[int, Moment] = {}
     now = Fraction(0)
-    state = Moment(start, np.zeros(rewards.shape[1]), 0.0, 0.0, 0.0, 0.0)
+    kinds = rewards.shape[1]
+    state = Moment(start, np.zeros(kinds), 0.0, 0.0, np.zeros(kinds), 0.0)
     span = Fraction(32) / Fraction(step.rate)
     shape: Shape | None = None
     spent_work, past, idle = 0.0, math.inf, 0
@@ -115,10 +126,17 @@ def follow(
             low, high, left = _ends(shape, state)
             # Settled to the proven error of the weights, or to what no float shows.
             if low > 0.0 and high / low - 1.0 <= 3.0 * state.relative + _SETTLED and left <= _negligible(state):
+                guarded = _guarded(shape, rewards, classes) if shape.members.size == chain.n else None
                 for number in order:
                     if number not in found:
-                        found[number] = _followed(
-                            shape, state, rewards, rewards_error, times[number] - now, low, high, left
+                        later = times[number] - now
+                        plainly = _followed(shape, state, rewards, rewards_error, later, low, high, left)
+                        found[number] = (
+                            plainly
+                            if guarded is None
+                            else _sharpened(
+                                plainly, shape, state, rewards, rewards_error, later, guarded, start, classes
+                            )
                         )
                 break
             apart = high / low - 1.0 if low > 0.0 else math.inf
@@ -144,7 +162,7 @@ def _negligible(state: Moment) -> float:
 def _later(state: Moment, walked: uniformisation.Walk, number: int) -> Moment:
     """Put a further stretch behind what was reached; relative errors of the weights carry over."""
     relative = (state.relative + walked.relative[number]) * (1.0 + 1e-6)
-    gained = max(state.integrals_relative, state.relative + walked.integrals_relative[number]) + UNIT
+    gained = np.maximum(state.integrals_relative, state.relative + walked.integrals_relative[number]) + UNIT
     return Moment(
         walked.weights[number],
         state.integrals + walked.integrals[number],
@@ -184,10 +202,10 @@ def _followed(
     weights[shape.members] = shape.weights * middle
     # Half the width over the lower end; the floats y and their products add a few roundings.
     relative = above((most - least) / (2 * least)) + 6 * UNIT if least > 0 else math.inf
-    per = np.einsum("i,ij->j", shape.weights, rewards[shape.members])
+    per = _summed(shape.weights, rewards[shape.members])
     span_low, span_high = Fraction(low) * shortest, Fraction(high) * longest
     more = per * float((span_low + span_high) / 2)
-    widened = above((span_high - span_low) / (2 * span_low)) + (shape.weights.size + 8) * UNIT + rewards_error
+    widened = above((span_high - span_low) / (2 * span_low)) + 8 * UNIT + rewards_error
     largest = float(rewards.max()) if rewards.size else 0.0
     if not max(relative, widened) < WIDEST and middle > 1e-290:
         raise NotReached(f"the settled shape bounds the answer to {max(relative, widened):.2g} only")
@@ -200,9 +218,70 @@ def _followed(
         state.integrals + more,
         relative,
         left + tiny + 2.0**-1060,
-        max(state.integrals_relative, widened) + 2 * UNIT,
+        np.maximum(state.integrals_relative, widened) + 2 * UNIT,
         (state.integrals_absolute + left * largest * float(later)) * (1.0 + 1e-6) + 2.0**-1060,
     )
+
+
+def _summed(weights: Floats, columns: Floats) -> Floats:
+    """Return ``weights @ columns``, each product and the sum rounded once: relative error ``2 u``."""
+    return np.array([math.fsum((weights * columns[:, kind]).tolist()) for kind in range(columns.shape[1])])
+
+
+def _guarded(shape: Shape, rewards: Floats, classes: int) -> Floats | None:
+    """Return the guard of each integral that has one, float64[n, c]: classes, or rewards where nothing absorbs."""
+    here = rewards[shape.members]
+    try:
+        return guard(shape.hub, here[:, :classes] if classes else here, absorbing=classes > 0)
+    except NotReached:
+        return None
+
+
+def _sharpened(
+    plainly: Moment,
+    shape: Shape,
+    state: Moment,
+    rewards: Floats,
+    rewards_error: float,
+    later: Fraction,
+    guarded: Floats,
+    start: Floats,
+    classes: int,
+) -> Moment:
+    """Return the moment with integrals from the conserved mass, where their bound is narrower.
+
+    Mass is conserved, so the weights at the time of settling are ``A y`` plus a difference of mass 0, with
+    ``A = (mass - absorbed) / sum y``; the difference costs what the guard says (`markov.chain.guard`).
+    """
+    mass = Fraction(math.fsum(start.tolist()))
+    absorbed = Fraction(math.fsum(state.integrals[:classes].tolist()))
+    doubt = Fraction(float(state.integrals_relative[:classes].max(initial=0.0))) + Fraction(4 * UNIT)
+    off = absorbed * doubt * 2 + Fraction(state.integrals_absolute) * classes + mass * Fraction(2 * UNIT)
+    if not absorbed + off < mass:
+        return plainly
+    whole = Fraction(math.fsum(shape.weights.tolist()))
+    low = (mass - absorbed - off) / whole * (1 - Fraction(4 * UNIT))
+    high = (mass - absorbed + off) / whole * (1 + Fraction(4 * UNIT))
+    settled = shape.weights * float((low + high) / 2)
+    here = state.weights[shape.members]
+    apart = np.abs(here - settled) + here * (state.relative * 1.001 + 4 * UNIT) + state.absolute
+    apart += shape.weights * (float(high - low) + 4 * UNIT * float(high))
+    shortest, longest = later * _mean_fading(shape.fastest * later)[0], later * _mean_fading(shape.slowest * later)[1]
+    per = _summed(shape.weights, rewards[shape.members])
+    integrals, relatives = plainly.integrals.copy(), plainly.integrals_relative.copy()
+    slack = Fraction(rewards_error + 8 * UNIT)
+    for kind in range(guarded.shape[1]):
+        moved = Fraction(math.fsum((apart * guarded[:, kind]).tolist()) * (1.0 + 1e-9))
+        moved += Fraction(state.integrals_absolute)
+        base, own = Fraction(float(state.integrals[kind])), Fraction(float(state.integrals_relative[kind]) * 1.001)
+        rate = Fraction(float(per[kind]))
+        least = base * (1 - own) + low * rate * (1 - slack) * shortest - moved
+        most = base * (1 + own) + high * rate * (1 + slack) * longest + moved
+        if least > 0:
+            width = above((most - least) / (2 * least)) + 2 * UNIT
+            if width < relatives[kind]:
+                integrals[kind], relatives[kind] = float((least + most) / 2), width
+    return replace(plainly, integrals=integrals, integrals_relative=relatives)
 
 
 def _decimal(x: Fraction) -> Decimal:
@@ -272,11 +351,11 @@ def look_back(chain: Generator, loss: Doubled, loss_error: float, time: Fraction
             if shape.members.size < chain.n:
                 raise NotReached("the states that must not be left are several classes: survival does not settle")
         if now < time and shape is not None:
-            low, high, _ = _ends(shape, Moment(values, np.zeros(0), relative, absolute, 0.0, 0.0))
+            low, high, _ = _ends(shape, Moment(values, np.zeros(0), relative, absolute, np.zeros(0), 0.0))
             if low > 0.0 and high / low - 1.0 <= 3.0 * relative + _SETTLED:
                 found = _followed(
                     shape,
-                    Moment(values, np.zeros(0), relative, absolute, 0.0, 0.0),
+                    Moment(values, np.zeros(0), relative, absolute, np.zeros(0), 0.0),
                     np.zeros((chain.n, 0)),
                     0.0,
                     time - now,

@@ -59,12 +59,15 @@ class Shape:
         The vector, positive, as the floats nearest to the verified double-doubles.
     slowest, fastest : Fraction
         theta_lo and theta_hi: the vector decays at rates between these.
+    hub : Hub
+        The class grounded at a likely state.
     """
 
     members: NDArray[np.int64]
     weights: Floats
     slowest: Fraction
     fastest: Fraction
+    hub: Hub
 
 
 def shape_of(chain: Generator, loss: Doubled, loss_error: float, likely: int, longest: Fraction, side: Side) -> Shape:
@@ -131,7 +134,7 @@ def shape_of(chain: Generator, loss: Doubled, loss_error: float, likely: int, lo
     weights[hub.number] = 1.0
     if weights.min() < 1e-250:
         raise NotReached("the quasi-stationary shape underflows")
-    return Shape(members, weights, *best)
+    return Shape(members, weights, *best, hub)
 
 
 def _decay(hub: Hub, off: Doubled) -> Doubled:

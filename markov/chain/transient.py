@@ -1,4 +1,4 @@
-"""Values at given times: state probabilities, absorption, integrals of rewards, survival of a duration.
+"""Values at given times: state probabilities, absorption, integrals of rewards.
 
 The method is chosen by size and by the number of expected jumps:
 
@@ -28,7 +28,7 @@ from numpy.typing import ArrayLike, NDArray
 from markov.chain import ladder, settling, squaring, uniformisation
 from markov.chain.bounds import Enclosure, Flags, Floats, Vector, distribution, relative_to_computed
 from markov.chain.doubled import UNIT, Doubled, plain, total, total_error
-from markov.chain.generator import Generator, Restriction, as_flags
+from markov.chain.generator import Generator, Restriction
 from markov.errors import NotReached, UsageError
 
 Method = Literal["ladder", "uniformisation", "settling", "squaring"]
@@ -44,7 +44,7 @@ _SETTLED = "uniformisation, then the settled shape"
 _ESTIMATE = "scaling and squaring in floats (estimate)"
 
 
-_NAMES: dict[Method, str] = {
+NAMES: dict[Method, str] = {
     "ladder": _ROUNDS,
     "uniformisation": _UNIFORM,
     "settling": _SETTLED,
@@ -66,6 +66,9 @@ class Transient:
         Per time the probability of having entered each class of absorbing states.
     integrals : tuple of Vector
         Per time the integral of each reward from 0 to that time, before absorption.
+    alive : tuple of Enclosure
+        Per time the probability of not having been absorbed, narrow next to 0 by the states and next to 1 by what was
+        absorbed.
     method : str
         How.
     """
@@ -74,6 +77,7 @@ class Transient:
     states: tuple[Vector, ...]
     absorbed: tuple[Vector, ...]
     integrals: tuple[Vector, ...]
+    alive: tuple[Enclosure, ...]
     method: str
 
 
@@ -202,7 +206,7 @@ def transient(
     if later and members.size:
         chosen, outcome = run.answer(method)
     whole = first.total if first.total is not None and not classes_reached.any() else None
-    name = _NAMES[chosen]
+    name = NAMES[chosen]
     earning = np.array([bool((carry & reached & ~stopped).any()) for carry in carried], dtype=bool)
     states, absorbed, integrals = [], [], []
     position = 0
@@ -225,7 +229,7 @@ def transient(
         possible[members] = True
         error = _with_start(result.relative, result.absolute, first, begin, 1.0)
         states.append(Vector(values, *error, name, possible, whole))
-        error = _with_start(result.gained, result.off, first, begin, 1.0)
+        error = _with_start(result.taken, result.off, first, begin, 1.0)
         if initial.any():
             error = (None if error[0] is None else error[0] + generator.n * UNIT, error[1])
         absorbed.append(Vector(initial + result.absorbed, *error, name, classes_reached))
@@ -238,7 +242,15 @@ def transient(
                 earning,
             )
         )
-    return Transient(exact_times, tuple(states), tuple(absorbed), tuple(integrals), name)
+    alive = tuple(_alive(here, gone, first) for here, gone in zip(states, absorbed, strict=True))
+    return Transient(exact_times, tuple(states), tuple(absorbed), tuple(integrals), alive, name)
+
+
+def _alive(here: Vector, gone: Vector, first: Vector) -> Enclosure:
+    direct = here.weighted(np.ones(len(here)))
+    if first.total != 1.0 or len(gone) == 0:
+        return direct
+    return direct.capped().meet(gone.weighted(np.ones(len(gone))).capped().complement())
 
 
 def _with_start(
@@ -266,7 +278,8 @@ class _Moment:
     integrals: Floats
     relative: float | None
     absolute: float
-    gained: float | None
+    taken: float | None  # of what was absorbed
+    gained: float | None  # of integrals
     off: float
 
 
@@ -336,7 +349,7 @@ class _Run:
             try:
                 return each, ways[each]()
             except NotReached as reason:
-                reasons.append(f"{_NAMES[each]}: {reason}")
+                reasons.append(f"{NAMES[each]}: {reason}")
         raise NotReached("; ".join(dict.fromkeys(reasons)))
 
     def _by_ladder(self) -> _Outcome:
@@ -356,6 +369,7 @@ class _Run:
                     integrals[number, self.classes :],
                     climbed.relative[number],
                     climbed.absolute[number],
+                    climbed.integrals_relative[number],
                     climbed.integrals_relative[number],
                     climbed.integrals_absolute[number],
                 )
@@ -383,6 +397,7 @@ class _Run:
                     walked.relative[number],
                     walked.absolute[number],
                     walked.integrals_relative[number],
+                    walked.integrals_relative[number],
                     walked.integrals_absolute[number],
                 )
                 for number in range(len(self.times))
@@ -392,7 +407,9 @@ class _Run:
     def _by_settling(self) -> _Outcome:
         loss, loss_error = self.loss()
         lost = plain(np.zeros(self.part.chain.n)) if loss is None else loss
-        found = settling.follow(self.part.chain, lost, loss_error, self.start, *self._columns(), self.times)
+        found = settling.follow(
+            self.part.chain, lost, loss_error, self.start, *self._columns(), self.times, self.classes
+        )
         return _Outcome(
             tuple(
                 _Moment(
@@ -401,7 +418,8 @@ class _Run:
                     each.integrals[self.classes :],
                     each.relative,
                     each.absolute,
-                    each.integrals_relative,
+                    float(each.integrals_relative[: self.classes].max(initial=0.0)),
+                    float(each.integrals_relative[self.classes :].max(initial=0.0)),
                     each.integrals_absolute,
                 )
                 for each in found
@@ -414,7 +432,7 @@ class _Run:
         )
         return _Outcome(
             tuple(
-                _Moment(weights[number], absorbed[number], integrals[number], None, 0.0, None, 0.0)
+                _Moment(weights[number], absorbed[number], integrals[number], None, 0.0, None, None, 0.0)
                 for number in range(len(self.times))
             )
         )
@@ -423,121 +441,3 @@ class _Run:
 def ladder_seconds(n: int, expected: float) -> float:
     """Return about how long the ladder takes, from its matrix products (measured on one core)."""
     return 7e-9 * n**3 * (20.0 + math.log2(expected + 2.0))
-
-
-def survival(generator: Generator, alive: ArrayLike, duration: Time, *, method: Method | None = None) -> Vector:
-    """Return for each state the probability of not leaving the `alive` states within a duration.
-
-    Parameters
-    ----------
-    generator : Generator
-        n states.
-    alive : bool[n] or numbers
-        States that must not be left; from any other state the probability is 0.
-    duration : Fraction, float or int
-        Exact, not negative.
-
-    Returns
-    -------
-    Vector
-        n probabilities.  Weight them with a distribution for an interval reliability.
-
-    Raises
-    ------
-    NotReached
-        More than `LADDER_ALWAYS` states over too many expected jumps.
-    """
-    (time,) = as_times([duration])
-    inside = as_flags(alive, generator.n)
-    doomed = generator.reversed().reachable(~inside, blocked=None) if not inside.all() else ~inside
-    values = inside.astype(np.float64)
-    if time == 0 or not (doomed & inside).any():
-        return Vector(values, 0.0, 0.0, "by structure", inside)
-    # Only states with a path out matter; from the others survival is certain, and they count as leaks of no harm.
-    mortal = np.flatnonzero(doomed & inside)
-    part = generator.restricted(np.flatnonzero(inside), np.where(inside, -1, 0), 1)
-    loss = Doubled(part.absorption.high[:, 0], part.absorption.low[:, 0])
-    expected = uniformisation.expected_jumps(part.chain, loss, time)
-    reasons = []
-    for chosen in [method] if method else _survival_methods(part, loss, time, expected):
-        try:
-            result, relative, absolute = _surviving(part, loss, time, chosen)
-            break
-        except NotReached as reason:
-            reasons.append(f"{_NAMES[chosen]}: {reason}")
-    else:
-        raise NotReached("; ".join(dict.fromkeys(reasons)))
-    values[part.members] = result
-    certain = inside.copy()
-    certain[mortal] = False
-    values[certain] = 1.0
-    return Vector(
-        np.minimum(values, 1.0),
-        relative_to_computed(relative + UNIT),
-        absolute * (1.0 + 2.0 * relative) * (1.0 + 1e-9),
-        _NAMES[chosen],
-        inside,
-    )
-
-
-def _survival_methods(part: Restriction, loss: Doubled, time: Fraction, expected: float) -> list[Method]:
-    """Methods worth trying for survival, the best first."""
-    n = part.chain.n
-    if n <= LADDER_ALWAYS:
-        return ["ladder"]
-    step = uniformisation.jumps(part.chain, loss, backwards=True)
-    quick = expected * step.roundings * UNIT < 1e-12 or (expected + 200.0) * (step.work + 10_000) < 1e8
-    chosen: list[Method] = ["uniformisation"] if quick and uniformisation.affordable(step, [time]) else []
-    if ladder_seconds(n, expected) < 3.0:
-        chosen.append("ladder")
-    chosen.append("settling")
-    if ladder_seconds(n, expected) < LADDER_PATIENCE:
-        chosen.append("ladder")
-    return [*chosen, "uniformisation"]
-
-
-def _surviving(part: Restriction, loss: Doubled, time: Fraction, method: Method) -> tuple[Floats, float, float]:
-    """Return survival from each state with its errors relative to the exact values, before rounding to floats."""
-    n = part.chain.n
-    if method == "ladder":
-        prepared = ladder.build(part.chain, loss, part.absorption_error, plain(np.zeros((n, 0))), 0.0, [time])
-        found, relative, absolute = ladder.look_back(prepared, plain(np.ones(n)), time)
-        return found.high + found.low, relative, absolute
-    if method == "uniformisation":
-        step = uniformisation.jumps(part.chain, loss, backwards=True)
-        return uniformisation.look_back(step, np.ones(n), time)
-    if method == "settling":
-        return settling.look_back(part.chain, loss, part.absorption_error, time)
-    raise UsageError(f"method {method}: survival knows ladder, uniformisation and settling")
-
-
-def flow(generator: Generator, leaving: ArrayLike, entering: ArrayLike) -> Vector:
-    """Return the total rate from each of some states into any of some others.
-
-    Parameters
-    ----------
-    generator : Generator
-        n states.
-    leaving, entering : bool[n] or numbers
-        A state outside `leaving` gets 0; transitions into `entering` are added up.
-
-    Returns
-    -------
-    Vector
-        n rates per unit of time, usable as weights of a distribution (a frequency) and as a reward (a number of
-        passages).
-    """
-    here, there = as_flags(leaving, generator.n), as_flags(entering, generator.n)
-    members = np.flatnonzero(here)
-    label = np.where(there & ~here, 0, -1)
-    if (here & there).any():
-        raise UsageError("states to leave and states to enter overlap")
-    part = generator.restricted(members, label, 1)
-    values = np.zeros(generator.n)
-    values[members] = part.absorption.high[:, 0] + part.absorption.low[:, 0]
-    return Vector(values, relative_to_computed(part.absorption_error + UNIT), 0.0, "sum of rates", values > 0.0)
-
-
-def entries(vector: Vector) -> list[Enclosure]:
-    """Return every entry of a short vector as an enclosure."""
-    return [vector.entry(number) for number in range(len(vector))]

@@ -189,9 +189,10 @@ class Answers:
         return self._free.states[self._times.index(at)]
 
     def _integral(self, at: Fraction, of: str | None, which: int) -> Enclosure:
-        if of not in self._subjects:
-            self.up(of)  # raises where the subject has no down state
-            raise AssertionError(f"integrals of {of} were not expected")
+        if of not in self._subjects:  # not told in advance: work everything out once more, with this subject
+            self.up(of)
+            self._subjects.append(of)
+            self.__dict__.pop("_free", None)
         integrals = self._free.integrals[self._times.index(at)]
         return integrals.entry(3 * self._subjects.index(of) + which)
 
@@ -231,14 +232,15 @@ class Answers:
             return self.long_run(lambda pi: pi.weighted(lasting)).capped()
         return self._states_at(question.at_hours).weighted(lasting).capped()
 
-    def _share_of_states(self, states: Mask, at: Fraction | None) -> Enclosure:
+    def share_of_states(self, states: Mask, at: Fraction | None) -> Enclosure:
+        """Return the probability of some states, in the long run or at a time."""
         return self.long_run_share(states) if at is None else self._states_at(at).weighted(states)
 
     def _availability(self, question: Question) -> Enclosure:
-        return self._share_of_states(self.up(question.of), question.at_hours)
+        return self.share_of_states(self.up(question.of), question.at_hours)
 
     def _unavailability(self, question: Question) -> Enclosure:
-        return self._share_of_states(~self.up(question.of), question.at_hours)
+        return self.share_of_states(~self.up(question.of), question.at_hours)
 
     def _mean_unavailability(self, question: Question) -> Enclosure:
         at = _positive_time(question)
@@ -319,7 +321,7 @@ class Answers:
             raise AssertionError("a state probability names its state")
         states = np.zeros(self.space.size, np.bool_)
         states[self.space.find(question.state)] = True
-        return self._share_of_states(states, question.at_hours)
+        return self.share_of_states(states, question.at_hours)
 
     def mean_of(self, values: Values, at: Fraction | None) -> Enclosure:
         """Return the mean of a number that each state has, in the long run or at a time."""
@@ -333,7 +335,7 @@ class Answers:
     def _mean_capacity(self, question: Question) -> Enclosure:
         share = self.space.capacity(question.of)
         if np.isin(share, (0.0, 1.0)).all():
-            return self._share_of_states(share == 1.0, question.at_hours)
+            return self.share_of_states(share == 1.0, question.at_hours)
         # A share is formed by a few roundings: divisions by `required` and sums over the members.
         weights = (16 * UNIT,)
         if question.at_hours is None:

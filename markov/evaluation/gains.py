@@ -11,6 +11,7 @@ from markov.errors import IllPosed
 from markov.evaluation.answers import Answers
 from markov.evaluation.combining import Share, combine
 from markov.evaluation.questions import Question
+from markov.evaluation.solver import Solver
 from markov.model import Group, Member, Model, Named
 from markov.states import generate
 
@@ -20,7 +21,7 @@ GAINS = ("gain_over_single_unit", "gain_over_independent_blocks")
 Rival = Callable[[Model, Fraction | None], Enclosure]
 
 
-def gain(model: Model, answers: Answers, question: Question) -> Enclosure:
+def gain(model: Model, solver: Solver, question: Question) -> Enclosure:
     """Return how many times worse a simpler arrangement, or a simpler answer, is than the system.
 
     The measure compared is the steady-state unavailability, with a time the unreliability.
@@ -30,8 +31,8 @@ def gain(model: Model, answers: Answers, question: Question) -> Enclosure:
     IllPosed
         The system cannot fail, or either side has no such value.
     """
-    system = answers.answer(_badness(question.at_hours))
-    if not answers.can_fail(None) or system.upper == 0:
+    system = solver.answer(_badness(question.at_hours))
+    if not solver.can_fail(None) or system.upper == 0:
         raise IllPosed("no down state can be reached, so there is nothing to compare with")
     single = question.measure == "gain_over_single_unit"
     rival = plain_arrangement if single else independent_blocks
@@ -72,8 +73,7 @@ def independent_blocks(model: Model, at: Fraction | None) -> Enclosure:
 
 
 def _solve(model: Model, at: Fraction | None) -> Enclosure:
-    answers = Answers(generate(model), model.year_hours, () if at is None else (at,))
-    return answers.answer(_badness(at))
+    return Solver(model, () if at is None else (at,)).answer(_badness(at))
 
 
 def _badness(at: Fraction | None) -> Question:

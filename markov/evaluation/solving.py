@@ -10,8 +10,8 @@ from markov.errors import IllPosed, NotReached
 from markov.evaluation.answers import Answers
 from markov.evaluation.gains import GAINS, gain
 from markov.evaluation.questions import Question, all_questions, question_of
+from markov.evaluation.solver import Solver
 from markov.evaluation.unsaid import unsaid_choices
-from markov.evaluation.upkeep import UPKEEP, Upkeep
 from markov.evaluation.verdicts import judge
 from markov.model import Model
 from markov.results import Check, Result, Solution
@@ -56,46 +56,39 @@ def solve_model(
         Told what is being done.
     """
     progress("generating the chain")
-    space = build_space(model, limit=limit)
     questions = all_questions(model, times)
     points = [question.at_hours for question in questions if question.at_hours is not None]
-    answers = Answers(space, model.year_hours, points)
+    solver = Solver(model, points, limit=limit)
     for question in questions:
-        answers.expect(question)
+        solver.expect(question)
     results: dict[Question, Result] = {}
     for question in questions:
-        progress(f"{question.measure.replace('_', ' ')} of {space.size:,} states")
-        results[question] = _result(model, answers, question)
+        progress(f"{question.measure.replace('_', ' ')} of {solver.states:,} states")
+        results[question] = _result(model, solver, question)
     targets = tuple(
-        judge(target, results[question_of(model, target)], can_fail=_can_fail(answers, target.of))
+        judge(target, results[question_of(model, target)], can_fail=_can_fail(solver, target.of))
         for target in model.targets
     )
-    plan = space.plan if isinstance(space, GeneratedSpace) else None
     return Solution(
         title=model.title or "",
         source_name=model.source_name,
         sha256=model.sha256,
         version=__version__,
-        states=space.size,
-        transitions=answers.arrow_count,
-        raw_states=_raw_size(space),
+        states=solver.states,
+        transitions=solver.transitions,
+        raw_states=solver.raw_states,
         year_hours=model.year_hours,
         results=tuple(results.values()),
         targets=targets,
-        assumptions=unsaid_choices(model, plan),
+        assumptions=unsaid_choices(model, solver.plan),
         warnings=model.warnings,
     )
 
 
-def _result(model: Model, answers: Answers, question: Question) -> Result:
+def _result(model: Model, solver: Solver, question: Question) -> Result:
     found, reason, reached = None, None, True
     try:
-        if question.measure in GAINS:
-            found = gain(model, answers, question)
-        elif question.measure in UPKEEP:
-            found = Upkeep(answers).answer(question)
-        else:
-            found = answers.answer(question)
+        found = gain(model, solver, question) if question.measure in GAINS else solver.answer(question)
     except IllPosed as error:
         reason = error.reason
     except NotReached as error:
@@ -120,10 +113,10 @@ def _raw_size(space: StateSpace) -> int:
     return space.raw_size if isinstance(space, GeneratedSpace) else space.size
 
 
-def _can_fail(answers: Answers, of: str | None) -> bool:
+def _can_fail(solver: Solver, of: str | None) -> bool:
     """Tell whether a subject can go down; a crew pool, or a kind of several items, has no down state of its own."""
     try:
-        return answers.can_fail(of)
+        return solver.can_fail(of)
     except IllPosed:
         return True
 

@@ -68,38 +68,45 @@ class Upkeep:
         return self._answers.per_year(self._count_rate(counts))
 
     def _crew_utilisation(self, question: Question) -> Enclosure:
-        pools = self._pools(question.of)
-        busy = np.sum([self._plant.crews_at_work(pool) for pool in pools], axis=0)
-        return self._answers.mean_of(busy, None).over(sum(pool.size for pool in pools)).capped()
+        return self.busy(question.of).over(sum(pool.size for pool in self.pools(question.of))).capped()
+
+    def busy(self, of: str | None) -> Enclosure:
+        """Return the long-run mean number of crews at work."""
+        return self._answers.mean_of(np.sum([self._plant.crews_at_work(pool) for pool in self.pools(of)], axis=0), None)
 
     def _waiting_for_crew(self, question: Question) -> Enclosure:
-        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in self._pools(question.of)]
+        pools = self.pools(question.of)
+        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in pools]
         return self._answers.mean_of(np.sum(waiting, axis=0), None)
 
     def _probability_of_waiting(self, question: Question) -> Enclosure:
+        calls, refused = self.calls(question.of)
+        if calls.upper == 0:
+            raise IllPosed("in the long run no fault calls for a crew")
+        return (refused / calls).capped()
+
+    def calls(self, of: str | None) -> tuple[Enclosure, Enclosure]:
+        """Return how many faults per hour call for a crew, and how many of them find none free."""
         arrows, kinds = self._plant.arrows, self._plant.kinds.kinds
         rates = self._answers.arrow_rates[0]
         calls = np.zeros(len(arrows))
         refused = np.zeros(len(arrows))
-        for pool in self._pools(question.of):
+        for pool in self.pools(of):
             slots = self._slots(pool.name)
             calling = self._plant.calling(pool)
             ended = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])[arrows.kind]
             before = calling[arrows.source] - ended
             new = np.maximum(calling[arrows.target] - before, 0)
-            free = np.maximum(pool.size - before, 0)
             calls += new
-            refused += np.maximum(new - free, 0)
-        counting = calls > 0
-        if not counting.any():
-            raise IllPosed("no fault ever calls for a crew")
-        every = self._flow_rate(arrows.source[counting], (rates * calls)[counting])
-        if every.upper == 0:
-            raise IllPosed("in the long run no fault calls for a crew")
-        counting = refused > 0
-        return (self._flow_rate(arrows.source[counting], (rates * refused)[counting]) / every).capped()
+            refused += np.maximum(new - np.maximum(pool.size - before, 0), 0)
+        return self._arrow_flow(rates * calls), self._arrow_flow(rates * refused)
 
-    def _pools(self, of: str | None) -> tuple[Pool, ...]:
+    def _arrow_flow(self, rates: Values) -> Enclosure:
+        counting = rates > 0
+        return self._flow_rate(self._plant.arrows.source[counting], rates[counting])
+
+    def pools(self, of: str | None) -> tuple[Pool, ...]:
+        """Return the crew pools that a question concerns."""
         pools = self._plant.pools(of)
         if not pools:
             raise IllPosed(

@@ -10,7 +10,7 @@ and the crews act last (`crews`).
 
 from markov.states.arrows import ArrowKind, ArrowKinds
 from markov.states.explicit import ExplicitSpace, take
-from markov.states.generated import GeneratedSpace, generate
+from markov.states.generated import GeneratedSpace, Prepared, generate, generate_prepared, prepare
 from markov.states.plan import Plan, Pool, plan
 from markov.states.space import Arrows, StateSpace, structure
 
@@ -22,9 +22,12 @@ __all__ = [
     "GeneratedSpace",
     "Plan",
     "Pool",
+    "Prepared",
     "StateSpace",
     "generate",
+    "generate_prepared",
     "plan",
+    "prepare",
     "structure",
     "take",
 ]

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property, partial
+from math import comb, prod
 
 import numpy as np
 from numpy.typing import NDArray
@@ -275,6 +276,53 @@ def initial_digits(layout: Layout, failed: dict[str, int]) -> Digits:
     return x
 
 
+@dataclass(frozen=True)
+class Prepared:
+    """Everything that a chain is generated from, ready before its first state is.
+
+    Attributes
+    ----------
+    plan : Plan
+    charts : tuple of Chart
+        One an island; interchangeable islands share theirs.
+    classes : tuple of tuples of int
+        Interchangeable islands.
+    kinds : ArrowKinds
+    """
+
+    plan: Plan
+    charts: tuple[Chart, ...]
+    classes: Classes
+    kinds: ArrowKinds
+
+    @property
+    def most_states(self) -> int:
+        """Number of states at most: of each island any, of interchangeable ones any selection."""
+        merged = {island for islands in self.classes for island in islands}
+        count = prod(chart.size for island, chart in enumerate(self.charts) if island not in merged)
+        for islands in self.classes:
+            count *= comb(self.charts[islands[0]].size + len(islands) - 1, len(islands))
+        return count
+
+
+def prepare(model: Model, subjects: tuple[str, ...] = (), *, merge: bool = True) -> Prepared:
+    """Work out the islands of a model; see `generate` for the parameters."""
+    drawn = plan(model, subjects)
+    kinds = ArrowKinds()
+    contended = {unit.unit for pool in drawn.pools for unit in pool.kinds}
+    starts = tuple(initial_digits(layout, _initially_failed(model, layout)) for layout in drawn.islands)
+    classes = interchangeable(drawn.islands, starts, model.system, frozenset(subjects)) if merge else ()
+    first = {island: islands[0] for islands in classes for island in islands}
+    charts: list[Chart] = []
+    for number, (layout, begin) in enumerate(zip(drawn.islands, starts, strict=True)):
+        if first.get(number, number) < number:
+            charts.append(charts[first[number]])  # alike in everything but the name
+            continue
+        local = frozenset(at for at, slot in enumerate(layout.slots) if slot.unit not in contended)
+        charts.append(build_chart(layout, kinds, begin, local))
+    return Prepared(drawn, tuple(charts), classes, kinds)
+
+
 def generate(
     model: Model, subjects: tuple[str, ...] = (), *, limit: int = STATE_LIMIT, merge: bool = True
 ) -> GeneratedSpace:
@@ -295,25 +343,20 @@ def generate(
     TooLarge
         The chain has more states than `limit`, or cannot be numbered.
     """
-    drawn = plan(model, subjects)
-    kinds = ArrowKinds()
-    contended = {unit.unit for pool in drawn.pools for unit in pool.kinds}
-    starts = tuple(initial_digits(layout, _initially_failed(model, layout)) for layout in drawn.islands)
-    classes = interchangeable(drawn.islands, starts, model.system, frozenset(subjects)) if merge else ()
-    first = {island: islands[0] for islands in classes for island in islands}
-    charts: list[Chart] = []
-    for number, (layout, begin) in enumerate(zip(drawn.islands, starts, strict=True)):
-        if first.get(number, number) < number:
-            charts.append(charts[first[number]])  # alike in everything but the name
-            continue
-        local = frozenset(at for at, slot in enumerate(layout.slots) if slot.unit not in contended)
-        charts.append(build_chart(layout, kinds, begin, local))
-    desk = CrewDesk(tuple(charts), drawn.pools)
+    return generate_prepared(prepare(model, subjects, merge=merge), limit=limit)
+
+
+def generate_prepared(prepared: Prepared, *, limit: int = STATE_LIMIT) -> GeneratedSpace:
+    """Generate the chain from what was prepared; see `generate`."""
+    drawn, charts = prepared.plan, prepared.charts
+    desk = CrewDesk(charts, drawn.pools)
     island_of = {layout.node.name: number for number, layout in enumerate(drawn.islands)}
-    found = explore(tuple(charts), desk, kinds, model.system, island_of, classes=classes, limit=limit)
+    system = drawn.model.system
+    found = explore(charts, desk, prepared.kinds, system, island_of, classes=prepared.classes, limit=limit)
     start = tuple((state, Fraction(weight, choices)) for state, weight, choices in found.start)
-    packing = Packing(tuple(charts))
-    return GeneratedSpace(drawn, tuple(charts), desk, packing, found.keys, found.arrows, kinds, start, classes)
+    return GeneratedSpace(
+        drawn, charts, desk, Packing(charts), found.keys, found.arrows, prepared.kinds, start, prepared.classes
+    )
 
 
 def _initially_failed(model: Model, layout: Layout) -> dict[str, int]:

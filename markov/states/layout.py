@@ -276,6 +276,11 @@ class Layout:
         """The way to every group of the island, the innermost last."""
         return tuple(_groups((self.node,)))
 
+    @property
+    def heeds_the_system(self) -> bool:
+        """Whether anything here depends on whether the system is down."""
+        return any(node_of(path[-1]).while_down != "continue" for path in self.groups)
+
     def strides(self) -> NDArray[np.int64]:
         """Return the weights that turn a column of digits into one whole number, shape (rows,)."""
         strides = np.ones(len(self.tops), np.int64)

@@ -80,6 +80,10 @@ def test_absorption_is_contained(method):
             name = f"{chain.name} t={time}"
             failed = balls.total(truth[0, state] for state in chain.down)
             check(found.absorbed[number].entry(0), failed, method, name)
+            lasting = balls.total(truth[0, state] for state in alive)
+            if method != "squaring":
+                assert balls.holds(found.alive[number], lasting), name
+                assert float(lasting) < 1e-60 or found.alive[number].width <= 2.01 * max(WIDTH[method], 1e-15), name
             for state in alive:
                 check(found.states[number].entry(state), truth[0, state], method, f"{name} state {state}")
             check(found.integrals[number].entry(0), truth[0, chain.n], method, f"{name} time alive")

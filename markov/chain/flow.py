@@ -1,0 +1,38 @@
+"""Flow across a border: the rate from each of some states into any of some others."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from markov.chain.bounds import Vector, relative_to_computed
+from markov.chain.doubled import UNIT
+from markov.chain.generator import Generator, as_flags
+from markov.errors import UsageError
+
+
+def flow(generator: Generator, leaving: ArrayLike, entering: ArrayLike) -> Vector:
+    """Return the total rate from each of some states into any of some others.
+
+    Parameters
+    ----------
+    generator : Generator
+        n states.
+    leaving, entering : bool[n] or numbers
+        A state outside `leaving` gets 0; transitions into `entering` are added up.
+
+    Returns
+    -------
+    Vector
+        n rates per unit of time, usable as weights of a distribution (a frequency) and as a reward (a number of
+        passages).
+    """
+    here, there = as_flags(leaving, generator.n), as_flags(entering, generator.n)
+    members = np.flatnonzero(here)
+    label = np.where(there & ~here, 0, -1)
+    if (here & there).any():
+        raise UsageError("states to leave and states to enter overlap")
+    part = generator.restricted(members, label, 1)
+    values = np.zeros(generator.n)
+    values[members] = part.absorption.high[:, 0] + part.absorption.low[:, 0]
+    return Vector(values, relative_to_computed(part.absorption_error + UNIT), 0.0, "sum of rates", values > 0.0)

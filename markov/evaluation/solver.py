@@ -1,0 +1,142 @@
+"""Which chain a question goes to: that of the whole plant, or those of its independent parts."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from fractions import Fraction
+from functools import cached_property
+
+from markov.chain import Enclosure
+from markov.errors import IllPosed, TooLarge
+from markov.evaluation.answers import Answers
+from markov.evaluation.modules import find_modules
+from markov.evaluation.parts import NeedsWhole, Parts
+from markov.evaluation.questions import Question
+from markov.evaluation.upkeep import UPKEEP, Upkeep
+from markov.model import Model
+from markov.states import GeneratedSpace, Plan, Prepared, StateSpace, generate_prepared, prepare, take
+from markov.states.generation import STATE_LIMIT
+
+#: Chains up to this size are solved whole even where they fall into independent parts.
+WHOLE_UP_TO = 20_000
+
+
+class Solver:
+    """Answers the questions of one model, from as small a chain as each question allows.
+
+    Parameters
+    ----------
+    model : Model
+    times : sequence of Fraction
+        Times in hours at which values will be asked for.
+    limit : int
+        Largest number of states of any chain.
+    whole_up_to : int
+        Size up to which the whole chain is preferred.
+
+    Raises
+    ------
+    TooLarge
+        The chain, or one of its parts, would be larger than `limit`.
+    """
+
+    def __init__(
+        self,
+        model: Model,
+        times: Sequence[Fraction] = (),
+        *,
+        limit: int = STATE_LIMIT,
+        whole_up_to: int = WHOLE_UP_TO,
+    ) -> None:
+        self.model = model
+        self._times = tuple(times)
+        self._limit = limit
+        self._expected: list[Question] = []
+        self._prepared: Prepared | None = None
+        self.parts: Parts | None = None
+        if not model.explicit:
+            subjects = tuple(target.of for target in model.targets if target.of is not None)
+            self._prepared = prepare(model, subjects)
+            modules = find_modules(model, self._prepared.plan) if self.most_states > whole_up_to else None
+            if modules is not None:
+                self.parts = Parts(model, modules, self._times, limit)
+        if self.parts is None:
+            self.whole  # noqa: B018  (a chain that is too large is refused at once)
+
+    @property
+    def plan(self) -> Plan | None:
+        """What the chain is generated from; None for a hand-written chain."""
+        return None if self._prepared is None else self._prepared.plan
+
+    @property
+    def most_states(self) -> int:
+        """Number of states of the whole chain at most."""
+        return len(self.model.states) if self._prepared is None else self._prepared.most_states
+
+    @cached_property
+    def whole(self) -> Answers:
+        """Answers from the chain of the whole plant."""
+        space: StateSpace
+        space = take(self.model) if self._prepared is None else generate_prepared(self._prepared, limit=self._limit)
+        answers = Answers(space, self.model.year_hours, self._times)
+        for question in self._expected:
+            answers.expect(question)
+        return answers
+
+    @property
+    def states(self) -> int:
+        """Number of states solved: of the whole chain, or of its parts together."""
+        return self.whole.space.size if self.parts is None else self.parts.states
+
+    @property
+    def transitions(self) -> int:
+        """Number of distinct arrows of the chain or chains solved."""
+        return self.whole.arrow_count if self.parts is None else self.parts.transitions
+
+    @property
+    def raw_states(self) -> int:
+        """Number of states of the whole plant, before merging and, at most, before parting."""
+        if self.parts is not None:
+            return self.most_states
+        space = self.whole.space
+        return space.raw_size if isinstance(space, GeneratedSpace) else space.size
+
+    def expect(self, question: Question) -> None:
+        """Tell in advance what will be asked."""
+        self._expected.append(question)
+        if self.parts is None:
+            self.whole.expect(question)
+
+    def can_fail(self, of: str | None) -> bool:
+        """Tell whether a down state of a subject can be reached at all."""
+        if self.parts is None:
+            return self.whole.can_fail(of)
+        return self.parts.can_fail() if of is None else True
+
+    def answer(self, question: Question) -> Enclosure:
+        """Answer one question.
+
+        Raises
+        ------
+        IllPosed
+            The question has no answer, or needs a chain beyond the limit.
+        NotReached
+            No method reached its tolerance.
+        """
+        if self.parts is not None:
+            try:
+                return self.parts.answer(question)
+            except NeedsWhole:
+                self._must_fit()
+        if question.measure in UPKEEP:
+            return Upkeep(self.whole).answer(question)
+        return self.whole.answer(question)
+
+    def _must_fit(self) -> None:
+        told = f"needs the chain of the whole plant, with up to {self.most_states:,} states"
+        if self.most_states > self._limit:
+            raise IllPosed(f"{told}; at most {self._limit:,} are generated")
+        try:
+            self.whole  # noqa: B018
+        except TooLarge as error:
+            raise IllPosed(f"{told}: {error}") from error
