@@ -92,7 +92,9 @@ class Solution:
     states, transitions : int
         Size of the chain that was solved: states, distinct arrows.
     raw_states : int
-        States before interchangeable groups were merged.
+        States before interchangeable groups were merged and independent parts taken apart.
+    parts : int
+        Number of parts that were solved apart; 1 for the whole chain.
     year_hours : Fraction
         Hours in a year, as every per-year figure uses them.
     results : tuple of Result
@@ -109,6 +111,7 @@ class Solution:
     states: int
     transitions: int
     raw_states: int
+    parts: int
     year_hours: Fraction
     results: tuple[Result, ...]
     targets: tuple[TargetResult, ...]
@@ -139,6 +142,35 @@ class Solution:
 
 
 @dataclass(frozen=True)
+class Size:
+    """How large the chain of a model is, or would be.
+
+    Attributes
+    ----------
+    states, transitions : int
+        Of the chain that is solved, or of its parts together.
+    raw_states : int
+        Before interchangeable groups were merged and independent parts taken apart.
+    parts : int
+        Number of parts that are solved apart; 1 for the whole chain.
+    is_exact : bool
+        False where nothing was generated and the numbers are the largest possible.
+    memory_bytes : int
+        Predicted peak while solving.
+    is_within_limit : bool
+        False where `markov solve` refuses the chain.
+    """
+
+    states: int
+    transitions: int
+    raw_states: int
+    parts: int
+    is_exact: bool
+    memory_bytes: int
+    is_within_limit: bool
+
+
+@dataclass(frozen=True)
 class Check:
     """What `markov check` finds without solving anything: size, unsaid choices, warnings."""
 
@@ -146,8 +178,6 @@ class Check:
     source_name: str
     sha256: str
     version: str
-    states: int
-    transitions: int
-    raw_states: int
+    size: Size
     assumptions: tuple[str, ...]
     warnings: tuple[str, ...]

@@ -11,6 +11,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -256,7 +257,7 @@ class Vector:
         found = around(float(self.values[number]), self.relative_error, self.absolute_error, self.method)
         return found if self.total is None else found.capped(self.total)
 
-    def weighted(self, weights: Floats | Flags | Vector, weight_error: float = 0.0) -> Enclosure:
+    def weighted(self, weights: NDArray[Any] | Vector, weight_error: float = 0.0) -> Enclosure:
         """Return the sum of entries times weights.
 
         Parameters

@@ -5,6 +5,7 @@ A model becomes questions (`questions`), a chain answers them (`answers`), simpl
 together.
 """
 
-from markov.evaluation.solving import build_space, check_model, solve_model
+from markov.evaluation.sizing import check_model
+from markov.evaluation.solving import build_space, solve_model
 
 __all__ = ["build_space", "check_model", "solve_model"]

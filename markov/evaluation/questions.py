@@ -26,6 +26,11 @@ class Question:
         return MEASURES[self.measure]
 
 
+def subjects_of(model: Model) -> tuple[str, ...]:
+    """Name the groups, units and crew pools that targets ask about."""
+    return tuple(target.of for target in model.targets if target.of is not None)
+
+
 def question_of(model: Model, target: Target) -> Question:
     """Return what a target asks; a measure that needs a time takes that of the mission where it names none."""
     at = None if target.at is None else target.at.exact

@@ -11,7 +11,7 @@ from markov.errors import IllPosed, TooLarge
 from markov.evaluation.answers import Answers
 from markov.evaluation.modules import find_modules
 from markov.evaluation.parts import NeedsWhole, Parts
-from markov.evaluation.questions import Question
+from markov.evaluation.questions import Question, subjects_of
 from markov.evaluation.upkeep import UPKEEP, Upkeep
 from markov.model import Model
 from markov.states import GeneratedSpace, Plan, Prepared, StateSpace, generate_prepared, prepare, take
@@ -55,8 +55,7 @@ class Solver:
         self._prepared: Prepared | None = None
         self.parts: Parts | None = None
         if not model.explicit:
-            subjects = tuple(target.of for target in model.targets if target.of is not None)
-            self._prepared = prepare(model, subjects)
+            self._prepared = prepare(model, subjects_of(model))
             modules = find_modules(model, self._prepared.plan) if self.most_states > whole_up_to else None
             if modules is not None:
                 self.parts = Parts(model, modules, self._times, limit)

@@ -7,15 +7,14 @@ from fractions import Fraction
 
 from markov._version import __version__
 from markov.errors import IllPosed, NotReached
-from markov.evaluation.answers import Answers
 from markov.evaluation.gains import GAINS, gain
-from markov.evaluation.questions import Question, all_questions, question_of
+from markov.evaluation.questions import Question, all_questions, question_of, subjects_of
 from markov.evaluation.solver import Solver
 from markov.evaluation.unsaid import unsaid_choices
 from markov.evaluation.verdicts import judge
 from markov.model import Model
-from markov.results import Check, Result, Solution
-from markov.states import GeneratedSpace, StateSpace, generate, take
+from markov.results import Result, Solution
+from markov.states import StateSpace, generate, take
 from markov.states.generation import STATE_LIMIT
 
 #: Called with what is being done, for a progress line.
@@ -32,8 +31,7 @@ def build_space(model: Model, *, limit: int = STATE_LIMIT) -> StateSpace:
     """
     if model.explicit:
         return take(model)
-    subjects = tuple(target.of for target in model.targets if target.of is not None)
-    return generate(model, subjects, limit=limit)
+    return generate(model, subjects_of(model), limit=limit)
 
 
 def solve_model(
@@ -77,6 +75,7 @@ def solve_model(
         states=solver.states,
         transitions=solver.transitions,
         raw_states=solver.raw_states,
+        parts=1 if solver.parts is None else len(solver.parts.answers),
         year_hours=model.year_hours,
         results=tuple(results.values()),
         targets=targets,
@@ -109,30 +108,9 @@ def _result(model: Model, solver: Solver, question: Question) -> Result:
     )
 
 
-def _raw_size(space: StateSpace) -> int:
-    return space.raw_size if isinstance(space, GeneratedSpace) else space.size
-
-
 def _can_fail(solver: Solver, of: str | None) -> bool:
     """Tell whether a subject can go down; a crew pool, or a kind of several items, has no down state of its own."""
     try:
         return solver.can_fail(of)
     except IllPosed:
         return True
-
-
-def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
-    """Return the size of a model's chain, its unsaid choices and its warnings; solve nothing."""
-    space = build_space(model, limit=limit)
-    plan = space.plan if isinstance(space, GeneratedSpace) else None
-    return Check(
-        model.title or "",
-        model.source_name,
-        model.sha256,
-        __version__,
-        space.size,
-        Answers(space, model.year_hours).arrow_count,
-        _raw_size(space),
-        unsaid_choices(model, plan),
-        model.warnings,
-    )

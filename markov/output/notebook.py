@@ -21,7 +21,7 @@ def solution_html(solution: Solution) -> str:
     """Return tables of targets and results, the unsaid choices and the cautions as one HTML fragment."""
     parts = [
         f"<h4>{escape(solution.title or solution.source_name)}</h4>",
-        f"<p>{size_words(solution.states, solution.transitions, solution.raw_states)}; "
+        f"<p>{size_words(solution.states, solution.transitions, solution.raw_states, solution.parts)}; "
         f"a year is {float(solution.year_hours):g} h; spec {solution.sha256[:12]}; markov {solution.version}</p>",
     ]
     if solution.targets:

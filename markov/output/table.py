@@ -19,6 +19,7 @@ from markov.output.wording import (
     value_words,
 )
 from markov.results import Check, Result, Solution, TargetResult
+from markov.states.generation import WHAT_HELPS
 
 #: System measures that the table always holds; the JSON holds every measure.
 _ALWAYS = {
@@ -48,7 +49,7 @@ def print_solution(solution: Solution, console: Console) -> None:
     """Print a solution on a console."""
     console.print(Text(solution.title or solution.source_name, style="bold"))
     console.print(
-        f"{size_words(solution.states, solution.transitions, solution.raw_states)}; a year is "
+        f"{size_words(solution.states, solution.transitions, solution.raw_states, solution.parts)}; a year is "
         f"{float(solution.year_hours):g} h; spec {solution.sha256[:12]}; markov {solution.version}",
         style="dim",
     )
@@ -72,11 +73,15 @@ def print_solution(solution: Solution, console: Console) -> None:
 def print_check(check: Check, console: Console) -> None:
     """Print what `markov check` found on a console."""
     console.print(Text(check.title or check.source_name, style="bold"))
+    size = check.size
+    told = size_words(size.states, size.transitions, size.raw_states, size.parts)
     console.print(
-        f"{size_words(check.states, check.transitions, check.raw_states)}; "
-        f"spec {check.sha256[:12]}; markov {check.version}",
+        f"{told if size.is_exact else f'at most {told}'}; spec {check.sha256[:12]}; markov {check.version}",
         style="dim",
     )
+    console.print(f"Solving takes about {size.memory_bytes / 1e6:,.0f} MB of memory at its peak.")
+    if not size.is_within_limit:
+        console.print(f"This is more than is generated; {WHAT_HELPS}.")
     console.print("The spec is in order; nothing was solved.")
     _list(console, "Choices left unsaid", check.assumptions)
     _list(console, "Warnings", check.warnings)

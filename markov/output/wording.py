@@ -46,10 +46,16 @@ def hours_words(hours: Fraction | None) -> str:
     return f"{int(hours):,} h".replace(",", " ") if hours.denominator == 1 else f"{float(hours):.6g} h"
 
 
-def size_words(states: int, transitions: int, raw_states: int) -> str:
-    """Return the size of a chain, with its size before interchangeable groups were merged."""
-    merged = f" (merged from {raw_states:,}, groups that are alike)" if raw_states != states else ""
-    return f"{states:,} states{merged}, {transitions:,} transitions"
+def size_words(states: int, transitions: int, raw_states: int, parts: int = 1) -> str:
+    """Return the size of what is solved, with the size before alike groups were merged and parts taken apart."""
+    told = f"{states:,} states, {transitions:,} transitions"
+    if parts > 1:
+        return f"{told} in {parts} independent parts (of {_large(raw_states)} states together)"
+    return f"{told} (alike groups merged, from {_large(raw_states)} states)" if raw_states != states else told
+
+
+def _large(number: int) -> str:
+    return f"{number:,}" if number < 10**9 else f"{number:.2e}"
 
 
 def value_words(measure: str, value: float | None, digits: int = 6) -> str:

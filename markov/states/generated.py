@@ -10,12 +10,12 @@ from math import comb, prod
 import numpy as np
 from numpy.typing import NDArray
 
-from markov.errors import IllPosed
+from markov.errors import IllPosed, TooLarge
 from markov.model import Model, names
 from markov.states.arrows import ArrowKinds
 from markov.states.chart import Chart, build_chart
 from markov.states.crews import Columns, CrewDesk
-from markov.states.generation import STATE_LIMIT, Packing, explore
+from markov.states.generation import STATE_LIMIT, WHAT_HELPS, Packing, explore
 from markov.states.layout import Digits, Layout, Node, Slot, Train, node_of
 from markov.states.naming import island_label, join_labels
 from markov.states.plan import Plan, Pool, plan
@@ -276,6 +276,10 @@ def initial_digits(layout: Layout, failed: dict[str, int]) -> Digits:
     return x
 
 
+#: A chain may turn out smaller than it could be, as crews rule out some states; beyond this factor it is not tried.
+HOPELESS = 4
+
+
 @dataclass(frozen=True)
 class Prepared:
     """Everything that a chain is generated from, ready before its first state is.
@@ -303,6 +307,15 @@ class Prepared:
         for islands in self.classes:
             count *= comb(self.charts[islands[0]].size + len(islands) - 1, len(islands))
         return count
+
+    @property
+    def most_arrows(self) -> int:
+        """Number of transitions at most, as far as the mean number out of a local state tells."""
+        each = 0.0
+        for chart in self.charts:
+            tables = (*chart.spontaneous.values(), *chart.crew_driven.values())
+            each += sum(len(table) for table in tables) / chart.size
+        return round(self.most_states * each)
 
 
 def prepare(model: Model, subjects: tuple[str, ...] = (), *, merge: bool = True) -> Prepared:
@@ -347,7 +360,14 @@ def generate(
 
 
 def generate_prepared(prepared: Prepared, *, limit: int = STATE_LIMIT) -> GeneratedSpace:
-    """Generate the chain from what was prepared; see `generate`."""
+    """Generate the chain from what was prepared; see `generate`.
+
+    A chain that could be far larger than `limit` is refused before its first state is generated.
+    """
+    if prepared.most_states > HOPELESS * limit:
+        raise TooLarge(
+            f"a chain of {prepared.most_states:,} states at most, where {limit:,} are generated; {WHAT_HELPS}"
+        )
     drawn, charts = prepared.plan, prepared.charts
     desk = CrewDesk(charts, drawn.pools)
     island_of = {layout.node.name: number for number, layout in enumerate(drawn.islands)}

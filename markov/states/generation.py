@@ -26,6 +26,9 @@ Keys = NDArray[np.int64]
 #: States beyond which no chain is generated unless the caller asks for more.
 STATE_LIMIT = 5_000_000
 
+#: What a user can do about a chain that is too large.
+WHAT_HELPS = "fewer units or repair stages, one kind for units that are alike, or separate specs for what shares no crew would help"
+
 #: States taken from the frontier at once; small enough for the caches, large enough to keep Python out of the way.
 CHUNK = 1 << 16
 
@@ -139,10 +142,7 @@ def explore(
                 multiple.append(part.multiple)
         done += len(keys)
         if numbering.size > limit:
-            raise TooLarge(
-                f"more than {limit:,} states; fewer units or stages, kinds merged into one, "
-                "or separate specs for parts that share no crew would help"
-            )
+            raise TooLarge(f"more than {limit:,} states; {WHAT_HELPS}")
     arrows = Arrows(_joined(source), _joined(target), _joined(kind), _joined(multiple))
     return Explored(numbering.all(), arrows, start)
 

@@ -12,8 +12,8 @@ from markov.errors import NotReached
 from tests.chain import balls, families
 
 COUNT = 90
-#: Sweeps may decline heavily loaded or nearly uncoupled chains; they must not decline many of these.
-WIDTH = {"elimination": 1e-15, "dense": 1e-12, "sweeps": 1e-9}
+#: The same for all three: refinement in double-double leaves only the rounding of the result.
+WIDTH = {"elimination": 1e-15, "dense": 1e-15, "sweeps": 1e-15}
 
 
 def irreducible(chain: families.Chain) -> bool:
@@ -40,7 +40,7 @@ def test_stationary_probabilities_are_contained(linear_solver):
         assert balls.holds(down, sum(truth[state] for state in chain.down)), chain.name
         assert balls.holds(found.weighted(~chain.down_flags), 1 - sum(truth[state] for state in chain.down)), chain.name
     assert asked > 60
-    assert declined <= (0 if linear_solver != "sweeps" else asked // 4)
+    assert declined == 0
 
 
 def test_first_passage_is_contained(linear_solver):
@@ -62,7 +62,7 @@ def test_first_passage_is_contained(linear_solver):
         assert Fraction(spread.lower) ** 2 <= variance <= Fraction(spread.upper) ** 2, chain.name
         assert spread.width < 100 * WIDTH[linear_solver], chain.name
     assert asked == COUNT
-    assert declined <= (0 if linear_solver != "sweeps" else asked // 4)
+    assert declined == 0
 
 
 def test_rewards_and_several_ends_are_contained(linear_solver):
@@ -95,7 +95,7 @@ def test_rewards_and_several_ends_are_contained(linear_solver):
             mixed = Fraction(1, 4) * truth[0] + Fraction(3, 4) * truth[chain.n - 3]
             assert balls.holds(found, mixed), chain.name
             assert found.width < 2 * WIDTH[linear_solver], chain.name
-    assert declined <= (0 if linear_solver != "sweeps" else 15)
+    assert declined <= (0 if linear_solver != "sweeps" else 2)
 
 
 def test_a_start_that_carries_an_error_widens_the_answer():
@@ -130,11 +130,5 @@ def test_a_wrong_rate_is_noticed(seed, linear_solver):
     # The move back from the last state: it weighs on the stationary vector of every family.
     touched = max(pair for pair in chain.rates if pair[0] == chain.n - 1)
     wrong = chain.generator({touched: 1 + Fraction(1, 10**9)})
-    try:
-        found = room.stationary(wrong)
-    except NotReached:
-        pytest.skip("declined")
-    if max(found.entry(state).width for state in range(chain.n)) > 1e-10:
-        assert linear_solver == "sweeps"
-        pytest.skip("wide")
+    found = room.stationary(wrong)
     assert not all(balls.holds(found.entry(state), truth[state]) for state in range(chain.n))

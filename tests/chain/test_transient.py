@@ -14,7 +14,7 @@ from markov.errors import NotReached
 from tests.chain import balls, families
 
 METHODS = ("ladder", "uniformisation", "settling", "squaring")
-WIDTH = {"ladder": 3e-15, "uniformisation": 2e-9, "settling": 2e-6}
+WIDTH = {"ladder": 3e-15, "uniformisation": 2e-9, "settling": 2e-9}
 
 
 def suited(chain: families.Chain, method: str) -> list[Fraction]:

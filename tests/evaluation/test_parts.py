@@ -142,3 +142,39 @@ def test_a_system_whose_parts_never_fail_says_so() -> None:
     assert not apart.can_fail(None)
     with pytest.raises(IllPosed):
         apart.answer(Question("mean_up_time"))
+
+
+def test_check_predicts_the_size_without_generating() -> None:
+    model = read_text(f"{PLANT}system: {STRUCTURES[0]}\n", "spec")
+    size = markov.check(model).size
+    solved = Solver(model)
+    assert size.is_exact
+    assert (size.states, size.transitions) == (solved.states, solved.transitions)
+
+
+def test_check_of_a_plant_beyond_the_limit_says_so_and_solving_it_is_refused() -> None:
+    units = "\n".join(f"  u{at}: {{failure_rate: {at + 1}e-5 /h, repair_time: 10 h}}" for at in range(16))
+    groups = "\n".join(f"  g{at}: {{members: [{{unit: u{at}, count: 2}}], redundancy: active}}" for at in range(16))
+    every = ", ".join(f"u{at}" for at in range(16))
+    system = ", ".join(f"g{at}" for at in range(16))
+    text = (
+        f"units:\n{units}\ngroups:\n{groups}\ncrews: {{c: {{size: 1, repairs: [{every}]}}}}\n"
+        f"system: {{all_of: [{system}]}}\n"
+    )
+    model = read_text(text, "spec")
+    size = markov.check(model).size
+    assert size.states == 3**16
+    assert not size.is_exact
+    assert not size.is_within_limit
+    assert size.memory_bytes > 10**11
+    with pytest.raises(markov.TooLarge, match=r"43,046,721 states at most.*5,000,000"):
+        markov.solve(model)
+
+
+def test_check_tells_parts_apart() -> None:
+    units = "\n".join(f"  u{at}: {{failure_rate: {at + 1}e-5 /h, repair_time: 10 h}}" for at in range(16))
+    groups = "\n".join(f"  g{at}: {{members: [{{unit: u{at}, count: 2}}], redundancy: active}}" for at in range(16))
+    system = ", ".join(f"g{at}" for at in range(16))
+    size = markov.check(read_text(f"units:\n{units}\ngroups:\n{groups}\nsystem: {{all_of: [{system}]}}\n", "spec")).size
+    assert (size.states, size.parts, size.raw_states) == (48, 16, 3**16)
+    assert size.is_within_limit

@@ -17,7 +17,27 @@ The input is a dictionary in the form of the spec language with plain numbers (f
 
 Keys that are left out have the default of the language; no `repair_time` means never repaired, `repair_time` 0 renewed
 at once.  Left out of the scope: hidden faults, tests, spares, switch objects, common causes, phases, demand,
-restoration, deferred repair, load sharing, failure modes, groups as members.
+restoration, deferred repair, load sharing, failure modes, groups as members, failing starts of units that are renewed
+at once.
+
+How sentences that leave a choice are read here:
+
+- `until_repair` in a standby group: at the repair that brings good units to `required`, starts under way are given up
+  and empty places are filled by rank without start attempts; a running unit keeps its place.  `restart_without_failed`
+  does the same when its time is over, and so does the last repair during a `restart`.
+- A repaired unit that takes the place of a switchover under way sends the start listed last, of these the one at its
+  earliest stage, back to waiting.
+- An outage of `manual_takeover` or `restart_without_failed` that a repair has ended: places still empty are tried, with
+  switchover time.  A unit that starts again during such an outage: the standbys are tried for one empty place, in rank
+  order, without switchover time.
+- A start that is lost is begun anew during an uncovered outage, too: the takeover of that place was covered.
+- An `active` group: each covered fault has a switchover of its own; a repair that leaves `required` good ends all of
+  them, and so does the end of an outage.
+- `return_to_preferred` holds whenever the group is in normal order, not only at the repair of the preferred member.
+- `lost`: faults and repairs go on, repaired units wait, nothing is delivered.
+- Whoever is outside of the system goes on while the system is down, unless the group says otherwise.
+- A call finds no free crew when all are busy just before, a repair that ends in the same event not counted.
+- Without redundancy: starts under way in the same group count as done.
 """
 
 from __future__ import annotations

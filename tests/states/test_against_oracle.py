@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import random
 from collections import defaultdict
 from collections.abc import Mapping
@@ -317,6 +318,7 @@ def draw_initial(rng: random.Random, spec: Spec) -> dict[str, int]:
     return {key: rng.randint(1, count) for key, count in chosen}
 
 
+@functools.cache
 def draw_fitting(seed: int, largest: int, most: int) -> tuple[Spec, dict[str, float]]:
     """Draw specs from a seed until one has few enough states; return it with the numbers of the oracle."""
     rng = random.Random(seed)
@@ -335,7 +337,7 @@ def test_the_engine_agrees_with_the_oracle_on_a_random_spec(seed: int) -> None:
 
 
 @pytest.mark.long
-@pytest.mark.parametrize("seed", range(1_000, 1_600))
+@pytest.mark.parametrize("seed", range(1_000, 1_200))
 def test_the_engine_agrees_with_the_oracle_on_a_larger_random_spec(seed: int) -> None:
     spec, oracle = draw_fitting(seed, largest=5, most=700)
     assert disagreements(spec, of_engine(spec), oracle) == [], spec
@@ -807,9 +809,10 @@ def test_each_covered_fault_of_an_active_group_has_a_switchover_of_its_own() -> 
 # ------------------------------------------------------------------------- where the text is easily read past
 
 
-def test_a_manual_takeover_readmits_an_active_group_whose_switchover_is_under_way() -> None:
-    # "in `active` groups the good units are re-admitted": then they deliver.  In a state: good units, "s" for a
-    # switchover under way, "!" for the outage.  The first fault is covered, the second is not.
+@pytest.mark.parametrize("outcome", ["manual_takeover", "restart_without_failed"])
+def test_the_end_of_an_outage_readmits_an_active_group_whose_switchover_is_under_way(outcome: str) -> None:
+    # "in `active` groups the good units are re-admitted", "the good ones are back": then they deliver.  In a state:
+    # good units, "s" for a switchover under way, "!" for the outage.  The first fault is covered, the second is not.
     spec = plant(
         {"pump": unit("0.1")},
         "g",
@@ -818,38 +821,7 @@ def test_a_manual_takeover_readmits_an_active_group_whose_switchover_is_under_wa
             "redundancy": "active",
             "coverage": [Fraction(1), Fraction(0)],
             "switchover_time": Fraction(4),
-            "outcome": "manual_takeover",
-            "outcome_time": Fraction(2),
-        },
-    )
-    by_hand = worked(
-        {
-            ("3", "2s"): 0.3,
-            ("2s", "2"): 0.25,
-            ("2s", "1s!"): 0.2,
-            ("2", "1!"): 0.2,
-            ("1s!", "1!"): 0.25,
-            ("1s!", "1"): 0.5,
-            ("1s!", "0"): 0.1,
-            ("1!", "1"): 0.5,
-            ("1!", "0"): 0.1,
-            ("1", "0"): 0.1,
-        },
-        up="3 2 1",
-    )
-    assert differences(spec, by_hand) == []
-
-
-def test_the_good_units_of_an_active_group_are_back_after_a_restart_though_a_switchover_was_under_way() -> None:
-    spec = plant(
-        {"pump": unit("0.1")},
-        "g",
-        {
-            "members": [("pump", 3)],
-            "redundancy": "active",
-            "coverage": [Fraction(1), Fraction(0)],
-            "switchover_time": Fraction(4),
-            "outcome": "restart_without_failed",
+            "outcome": outcome,
             "outcome_time": Fraction(2),
         },
     )
@@ -886,9 +858,8 @@ def test_a_further_fault_does_not_end_the_switchover_of_an_active_group() -> Non
     spec = plant(
         {"pump": unit("0.1")},
         "g",
-        {"members": [("pump", 2)], "required": 1, "redundancy": "active", "switchover_time": Fraction(2)},
+        {"members": [("pump", 3)], "required": 2, "redundancy": "active", "switchover_time": Fraction(2)},
     )
-    spec["groups"]["g"] |= {"members": [("pump", 3)], "required": 2}
     by_hand = worked(
         {
             ("3", "2s"): 0.3,
@@ -907,7 +878,7 @@ def test_a_further_fault_does_not_end_the_switchover_of_an_active_group() -> Non
 
 def test_a_takeover_under_way_is_seen_through_when_another_place_becomes_uncovered() -> None:
     # "a unit lost meanwhile begins a new attempt ... A takeover under way completes when another place becomes
-    # uncovered."  Two main units that never fail by themselves again once both are gone; two hot spares.
+    # uncovered."  Two mains and two hot spares, the first fault covered, a later one not.
     # In a state: mains on duty, then D, S, W for spares on duty, being switched in, waiting; "!" for the outage.
     spec = plant(
         {"main": unit("0.1"), "spare": unit("0.2")},
@@ -958,9 +929,8 @@ def test_a_takeover_under_way_is_seen_through_when_another_place_becomes_uncover
 
 
 def test_a_preferred_member_does_not_wait_behind_one_that_was_repaired_during_its_start() -> None:
-    # "`return_to_preferred: true` switches back at once to a member listed earlier".  Main pump and spare, both
-    # failed; the spare comes back first.  With two mains: one failed, the other being switched in when the spare,
-    # repaired, takes the empty place; the main that now waits is listed earlier.
+    # "`return_to_preferred: true` switches back at once to a member listed earlier".  One main is failed, the other
+    # is being switched in when the spare, repaired, takes the empty place; the main that now waits is listed earlier.
     spec = plant(
         {"main": unit("0.1", "5"), "spare": unit("0.2", "2")},
         "g",
