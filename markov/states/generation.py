@@ -27,7 +27,9 @@ Keys = NDArray[np.int64]
 STATE_LIMIT = 5_000_000
 
 #: What a user can do about a chain that is too large.
-WHAT_HELPS = "fewer units or repair stages, one kind for units that are alike, or separate specs for what shares no crew would help"
+WHAT_HELPS = (
+    "fewer units or repair stages, one kind for units that are alike, separate specs for what shares no crew would help"
+)
 
 #: States taken from the frontier at once; small enough for the caches, large enough to keep Python out of the way.
 CHUNK = 1 << 16

@@ -74,12 +74,12 @@ def test_numbers_in_any_usual_form_are_the_same_number(program: Program, written
     assert program.solve(lamp(failure_rate=meant)).value("mean_up_time") == pytest.approx(1000, rel=1e-12)
 
 
-def test_one_million_is_a_million_and_not_text(program: Program) -> None:
-    told = program.solve(LAMP, "--at", "1e6 h", "--at", "1_000 h")
-    assert {each["at_hours"] for each in told.json["results"]} == {None, 100, 1000, 1000000}
+def test_an_exponent_and_an_underscore_make_numbers_and_not_text(program: Program) -> None:
+    told = program.solve(LAMP, "--at", "1e4 h", "--at", "1_000 h")
+    assert {each["at_hours"] for each in told.json["results"]} == {None, 100, 1000, 10000}
 
 
-@pytest.mark.parametrize("written", ["010 h", "1:30", "1:30 h", "1,5 h", "no", "off", "true", "0x1F h", "1e h", "~"])
+@pytest.mark.parametrize("written", ["010 h", "1:30", "1:30 h", "'1,5 h'", "no", "off", "true", "0x1F h", "1e h", "~"])
 def test_what_can_be_read_in_two_ways_is_refused(program: Program, written: str) -> None:
     (line,) = program.refused(lamp(repair_time=written))
     assert "units.lamp.repair_time" in line
