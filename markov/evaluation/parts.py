@@ -220,31 +220,6 @@ class Parts:
             total = total + (Upkeep(each).answer(question) if question.measure in UPKEEP else each.answer(question))
         return total
 
-    def _crewed(self) -> list[Upkeep]:
-        return [Upkeep(each) for each, space in zip(self.answers, self.spaces, strict=True) if space.pools(None)]
-
-    def _waiting_for_crew(self, question: Question) -> Enclosure:
-        total = point(0, "")
-        for each in self._crewed():
-            total = total + each.answer(question)
-        return total
-
-    def _crew_utilisation(self, question: Question) -> Enclosure:
-        busy, sizes = point(0, ""), {}
-        for each in self._crewed():
-            busy = busy + each.busy(None)
-            sizes.update({pool.name: pool.size for pool in each.pools(None)})
-        if not sizes:
-            raise IllPosed("the chain has no crew pool")
-        return busy.over(sum(sizes.values())).capped()
-
-    def _probability_of_waiting(self, question: Question) -> Enclosure:
-        calls, refused = point(0, ""), point(0, "")
-        for each in self._crewed():
-            some, none_free = each.calls(None)
-            calls, refused = calls + some, refused + none_free
-        return (refused / self._divisor(calls, "in the long run no fault calls for a crew")).capped()
-
 
 def _holds(answers: Answers, subject: str | None) -> bool:
     space = answers.space
@@ -276,8 +251,5 @@ _MEASURES: dict[str, Callable[[Parts, Question], Enclosure]] = {
     "mean_units_failed": Parts._sum,
     "repairs_per_year": Parts._sum,
     "starts_per_year": Parts._sum,
-    "crew_utilisation": Parts._crew_utilisation,
-    "waiting_for_crew": Parts._waiting_for_crew,
-    "probability_of_waiting": Parts._probability_of_waiting,
     "time_without_redundancy": Parts._time_without_redundancy,
 }

@@ -12,9 +12,19 @@ from markov.evaluation.answers import Answers
 from markov.evaluation.modules import find_modules
 from markov.evaluation.parts import NeedsWhole, Parts
 from markov.evaluation.questions import Question, subjects_of
-from markov.evaluation.upkeep import UPKEEP, Upkeep
-from markov.model import Model
-from markov.states import GeneratedSpace, Plan, Prepared, StateSpace, generate_prepared, prepare, take
+from markov.evaluation.upkeep import CREW_MEASURES, UPKEEP, Upkeep, crew_measure
+from markov.model import Model, Named
+from markov.states import (
+    GeneratedSpace,
+    Plan,
+    Prepared,
+    StateSpace,
+    generate,
+    generate_prepared,
+    island_names,
+    prepare,
+    take,
+)
 from markov.states.generation import STATE_LIMIT
 
 #: Chains up to this size are solved whole even where they fall into independent parts.
@@ -122,6 +132,8 @@ class Solver:
         NotReached
             No method reached its tolerance.
         """
+        if question.measure in CREW_MEASURES:
+            return crew_measure(question, self._loading)
         if self.parts is not None:
             try:
                 return self.parts.answer(question)
@@ -130,6 +142,22 @@ class Solver:
         if question.measure in UPKEEP:
             return Upkeep(self.whole).answer(question)
         return self.whole.answer(question)
+
+    @cached_property
+    def _loading(self) -> list[Upkeep]:
+        """The chains that load crews: those solved, and those of what stands outside of the system and never waits."""
+        chains = [self.whole] if self.parts is None else list(self.parts.answers)
+        spaces = [each.space for each in chains if isinstance(each.space, GeneratedSpace)]
+        serving = frozenset(pool.name for space in spaces for pool in space.pools(None))
+        solved = {layout.node.name for space in spaces for layout in space.plan.islands}
+        for name in island_names(self.model) if self._prepared is not None else ():
+            if name in solved:
+                continue
+            alone = {"system": Named(name), "while_down": "continue", "targets": ()}
+            space = generate(self.model.model_copy(update=alone), limit=self._limit)
+            chains.append(Answers(space, self.model.year_hours))
+            solved.update(layout.node.name for layout in space.plan.islands)
+        return [Upkeep(each, serving) for each in chains]
 
     def _must_fit(self) -> None:
         told = f"needs the chain of the whole plant, with up to {self.most_states:,} states"

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
 
-from markov.chain import Enclosure
+from markov.chain import Enclosure, point
 from markov.errors import IllPosed
 from markov.evaluation.answers import UNIT, Answers
 from markov.evaluation.questions import Question
@@ -19,17 +19,24 @@ Values = NDArray[np.float64]
 class Upkeep:
     """Answers questions about upkeep from the arrows of one generated chain.
 
+    Parameters
+    ----------
+    answers : Answers
+    serving : set of str, optional
+        Crew pools that count where no pool is named; all that this chain loads if left out.
+
     Raises
     ------
     IllPosed
         The chain is written by hand and does not tell units, crews or starts apart.
     """
 
-    def __init__(self, answers: Answers) -> None:
+    def __init__(self, answers: Answers, serving: frozenset[str] | None = None) -> None:
         if not isinstance(answers.space, GeneratedSpace):
             raise IllPosed("a hand-written chain does not tell units, crews or starts apart")
         self._answers = answers
         self._plant = answers.space
+        self._serving = serving
 
     def answer(self, question: Question) -> Enclosure:
         """Answer one question of `UPKEEP`."""
@@ -67,23 +74,14 @@ class Upkeep:
         )
         return self._answers.per_year(self._count_rate(counts))
 
-    def _crew_utilisation(self, question: Question) -> Enclosure:
-        return self.busy(question.of).over(sum(pool.size for pool in self.pools(question.of))).capped()
-
     def busy(self, of: str | None) -> Enclosure:
         """Return the long-run mean number of crews at work."""
         return self._answers.mean_of(np.sum([self._plant.crews_at_work(pool) for pool in self.pools(of)], axis=0), None)
 
-    def _waiting_for_crew(self, question: Question) -> Enclosure:
-        pools = self.pools(question.of)
-        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in pools]
+    def waiting(self, of: str | None) -> Enclosure:
+        """Return the long-run mean number of items that wait for a crew."""
+        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in self.pools(of)]
         return self._answers.mean_of(np.sum(waiting, axis=0), None)
-
-    def _probability_of_waiting(self, question: Question) -> Enclosure:
-        calls, refused = self.calls(question.of)
-        if calls.upper == 0:
-            raise IllPosed("in the long run no fault calls for a crew")
-        return (refused / calls).capped()
 
     def calls(self, of: str | None) -> tuple[Enclosure, Enclosure]:
         """Return how many faults per hour call for a crew, and how many of them find none free."""
@@ -106,13 +104,9 @@ class Upkeep:
         return self._flow_rate(self._plant.arrows.source[counting], rates[counting])
 
     def pools(self, of: str | None) -> tuple[Pool, ...]:
-        """Return the crew pools that a question concerns."""
-        pools = self._plant.pools(of)
-        if not pools:
-            raise IllPosed(
-                "the chain has no crew pool" if of is None else f"crew pool {of} serves nothing in the chain"
-            )
-        return pools
+        """Return the crew pools of this chain that a question concerns."""
+        found = self._plant.pools(of)
+        return found if of is not None or self._serving is None else tuple(p for p in found if p.name in self._serving)
 
     def _time_without_redundancy(self, question: Question) -> Enclosure:
         return self._answers.per_year(self._answers.long_run_share(self._plant.without_redundancy(question.of)))
@@ -121,8 +115,48 @@ class Upkeep:
 UPKEEP: dict[str, Callable[[Upkeep, Question], Enclosure]] = {
     "repairs_per_year": Upkeep._repairs_per_year,
     "starts_per_year": Upkeep._starts_per_year,
-    "crew_utilisation": Upkeep._crew_utilisation,
-    "waiting_for_crew": Upkeep._waiting_for_crew,
-    "probability_of_waiting": Upkeep._probability_of_waiting,
     "time_without_redundancy": Upkeep._time_without_redundancy,
 }
+
+
+#: The measures that `crew_measure` answers.
+CREW_MEASURES = ("crew_utilisation", "waiting_for_crew", "probability_of_waiting")
+
+
+def crew_measure(question: Question, chains: Sequence[Upkeep]) -> Enclosure:
+    """Answer a question about crews from all chains that load them.
+
+    Parameters
+    ----------
+    question : Question
+        Of one crew pool, or of all pools that serve the system.
+    chains : sequence of Upkeep
+        Independent of each other; a pool that serves several of them has a crew for every unit.
+
+    Raises
+    ------
+    IllPosed
+        There is no such pool, or nothing ever calls for it.
+    """
+    loading = [each for each in chains if each.pools(question.of)]
+    if not loading:
+        raise IllPosed(
+            "the chain has no crew pool" if question.of is None else f"crew pool {question.of} serves nothing here"
+        )
+    total = point(0, "")
+    if question.measure == "waiting_for_crew":
+        for each in loading:
+            total = total + each.waiting(question.of)
+        return total
+    if question.measure == "crew_utilisation":
+        sizes = {pool.name: pool.size for each in loading for pool in each.pools(question.of)}
+        for each in loading:
+            total = total + each.busy(question.of)
+        return total.over(sum(sizes.values())).capped()
+    refused = point(0, "")
+    for each in loading:
+        calls, none_free = each.calls(question.of)
+        total, refused = total + calls, refused + none_free
+    if total.upper == 0:
+        raise IllPosed("in the long run no fault calls for a crew")
+    return (refused / total).capped()

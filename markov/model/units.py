@@ -100,6 +100,14 @@ class Unit(Part):
                     )
 
     def _faults(self, unread: Collection[str]) -> Iterable[Fault]:
+        if self.repaired_at_once and self.logistic_delay is not None and not self.logistic_delay.is_zero:
+            yield Fault(
+                ("logistic_delay",),
+                "a `logistic_delay` for a unit that is renewed at once (`repair_time: 0 h`)",
+                "a repair time above zero beside it",
+                "give a `repair_time`, or remove `logistic_delay`",
+                on_key=True,
+            )
         if self.detected is not None and self.detected.exact != 1:
             yield Fault(
                 ("detected",),

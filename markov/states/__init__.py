@@ -11,7 +11,7 @@ and the crews act last (`crews`).
 from markov.states.arrows import ArrowKind, ArrowKinds
 from markov.states.explicit import ExplicitSpace, take
 from markov.states.generated import GeneratedSpace, Prepared, generate, generate_prepared, prepare
-from markov.states.plan import Plan, Pool, plan
+from markov.states.plan import Plan, Pool, island_names, plan
 from markov.states.space import Arrows, StateSpace, structure
 
 __all__ = [
@@ -26,6 +26,7 @@ __all__ = [
     "StateSpace",
     "generate",
     "generate_prepared",
+    "island_names",
     "plan",
     "prepare",
     "structure",

@@ -22,7 +22,7 @@ from markov.states.faults import duty_fault, idle_fault, start_lost
 from markov.states.layout import Digits, Entry, Layout, Node, Path, Slot, Train, designated, node_of, running
 from markov.states.outage import TIMED_OUTCOMES, end_outage
 from markov.states.repair import good_again
-from markov.states.takeover import fill_by_rank
+from markov.states.takeover import fill_by_rank, return_to_preferred
 from markov.states.trains import carry_upward
 
 Mode = Literal["always", "system_up", "system_down"]
@@ -70,7 +70,16 @@ def island_events(dice: Dice, layout: Layout) -> list[Event]:
     for path in layout.groups:
         events.extend(_switchovers(dice, path))
         events.extend(_outage_ends(dice, path))
+    for path in reversed(layout.groups):  # what the groups inside do comes first
+        node = node_of(path[-1])
+        if node.return_to_preferred and not node.active:
+            events = [replace(event, apply=partial(_and_return, dice, path, event.apply)) for event in events]
     return events
+
+
+def _and_return(dice: Dice, path: Path, apply: Apply, branch: Branch) -> list[Branch]:
+    """Let duty go back to preferred members after an event."""
+    return [done for after in apply(branch) for done in return_to_preferred(dice, path, after)]
 
 
 # --- faults ----------------------------------------------------------------------------------------------------------

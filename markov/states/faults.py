@@ -56,8 +56,11 @@ def idle_fault(slot: Slot, branch: Branch, *, stage: int = -1, designated: bool 
 
 
 def start_lost(dice: Dice, node: Node, branch: Branch) -> list[Branch]:
-    """Answer the loss of a member whose switchover was under way; the next one begins a new attempt in full."""
-    again, left_empty = branch.split(~node.in_outage(branch.x) & (node.waiting(branch.x) > 0))
+    """Answer the loss of a member whose switchover was under way; the next one begins a new attempt in full.
+
+    This goes on even where another place has become uncovered meanwhile: the takeover was covered when it began.
+    """
+    again, left_empty = branch.split(node.waiting(branch.x) > 0)
     result = [left_empty] if len(left_empty) else []
     if len(again):
         result.extend(start_one(dice, node, again))

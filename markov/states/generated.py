@@ -271,7 +271,8 @@ def initial_digits(layout: Layout, failed: dict[str, int]) -> Digits:
     """Return the initial state of an island: the given numbers of failed items, duty filled by rank."""
     x = layout.empty()
     for slot in layout.slots:
-        x[slot.entry_row] += failed.get(slot.unit, 0)
+        if not slot.renewed_at_once:
+            x[slot.entry_row] += failed.get(slot.unit, 0)
     fill_by_rank(layout.node, x)
     return x
 

@@ -52,6 +52,7 @@ class Slot:
     repair_stages: int
     logistic_delay: Factor | None
     capacity: Factor | None  # None: 1/required of the group
+    renewed_at_once: bool
     explicit_queue: bool
     preemptible: bool
     delay: int = -1

@@ -27,9 +27,10 @@ def fail_all(node: Node, x: Digits) -> None:
     for entry in node.entries:
         if isinstance(entry, Train):
             fail_all(entry.node, x)
-        elif entry.failure is not None or entry.repair is not None:  # else renewed at once: no state is entered
+        elif not entry.renewed_at_once:
             x[entry.entry_row] += entry.good(x)
     stand_down(node, x)
+    fill_by_rank(node, x)  # what is renewed at once is good again and takes the empty places
 
 
 def end_outage(dice: Dice, path: Path, branch: Branch) -> list[Branch]:
@@ -47,6 +48,8 @@ def end_outage(dice: Dice, path: Path, branch: Branch) -> list[Branch]:
             result.append(part)
             continue
         part.x[node.outage] = 0
+        for row in node.switching:  # the good items are re-admitted, whatever switchovers were under way
+            part.x[row] = 0
         if not carries or node.active:
             result.append(part)
         elif node.outcome == "manual_takeover":
@@ -105,16 +108,16 @@ def repair_ends_outage(dice: Dice, node: Node, branch: Branch, *, carries: bool)
 def drop_idle_outage(node: Node, x: Digits) -> None:
     """Clear an outage or a switchover that can no longer make a difference; in place.
 
-    In an active group with fewer than `required` good items nothing is delivered anyway, and the repair that brings
-    them back to `required` would end the outage.  In a standby group without a waiting item there is nothing that a
-    manual takeover could start, and every repaired item goes to duty either way.  Both states have the same future as
-    the state without the outage, so they are one state.
+    In an active group that needs one item and has none good nothing is delivered anyway, and the repair that brings
+    one back would end the outage.  (Where more are needed, those left would deliver a part outside of an outage.)  In a
+    standby group without a waiting item there is nothing that a manual takeover could start, and every repaired item
+    goes to duty either way.  Both states have the same future as the state without the outage, so they are one state.
     """
     for entry in node.entries:
         if isinstance(entry, Train):
             drop_idle_outage(entry.node, x)
     if node.active:
-        short = node.good(x) < node.required
+        short = (node.good(x) == 0) & (node.required == 1)
         for row in node.switching:
             x[row][short] = 0
         if node.outage >= 0 and node.outcome in ("until_repair", "manual_takeover", "restart_without_failed"):

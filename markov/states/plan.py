@@ -99,7 +99,7 @@ def members(model: Model, name: str) -> dict[str, int]:
     return counts
 
 
-def _island_names(model: Model) -> list[str]:
+def island_names(model: Model) -> list[str]:
     """Name every island that the model could have, those of the system first, then in the order of the text."""
     named = list(dict.fromkeys(names(model.system))) if model.system is not None else []
     grouped = {member.name for group in model.groups.values() for member in group.members}
@@ -111,7 +111,7 @@ def _island_names(model: Model) -> list[str]:
 
 
 def _islands_in_chain(model: Model, subjects: tuple[str, ...]) -> list[str]:
-    every = _island_names(model)
+    every = island_names(model)
     wanted = set(names(model.system)) if model.system is not None else set()
     wanted.update(name for name in every if name in subjects or any(unit in subjects for unit in members(model, name)))
     while True:
@@ -249,6 +249,7 @@ def _slot(model: Model, node: Node, unit: str, rank: int, count: int, contended:
         repair_stages=kind.repair_stages if kind.repairable else 1,
         logistic_delay=_delay(unit, kind, where),
         capacity=None if kind.capacity is None else _share(kind.capacity, f"capacity({unit})", "capacity", where),
+        renewed_at_once=kind.repaired_at_once,
         explicit_queue=explicit,
         preemptible=explicit and pool is not None and pool.order.index(unit) > 0,
     )

@@ -22,6 +22,8 @@ def critical(layout: Layout, x: Digits) -> NDArray[np.bool_]:
     perfect = Layout(_perfect(layout.node), layout.tops, layout.labels)
     dice = Dice(RateTable())
     delivers = layout.node.delivers(x)
+    x = x.copy()
+    _finish_switchovers(layout.node, x)
     result = np.zeros(x.shape[1], np.bool_)
     for event in island_events(dice, perfect):
         if not event.is_fault or event.mode == "system_down":
@@ -34,6 +36,16 @@ def critical(layout: Layout, x: Digits) -> NDArray[np.bool_]:
         for after in event.apply(branch):
             result[after.origin[~perfect.node.delivers(after.x)]] = True
     return result
+
+
+def _finish_switchovers(node: Node, x: Digits) -> None:
+    """Put every member on duty whose switchover is under way; in place."""
+    for entry in node.entries:
+        for row in entry.start:
+            x[entry.duty] += x[row]
+            x[row] = 0
+        if isinstance(entry, Train):
+            _finish_switchovers(entry.node, x)
 
 
 def _perfect(node: Node) -> Node:

@@ -1,4 +1,4 @@
-"""What happens when a member is good again: its next place, the end of an outage, the way back to a preferred one."""
+"""What happens when a member is good again: its next place, the end of an outage."""
 
 from __future__ import annotations
 
@@ -7,13 +7,7 @@ import numpy as np
 from markov.states.branching import Branch, Dice
 from markov.states.layout import Entry, Node, Train
 from markov.states.outage import repair_ends_outage
-from markov.states.takeover import (
-    empty_places,
-    fill_by_rank,
-    release_surplus_start,
-    return_to_preferred,
-    start_one,
-)
+from markov.states.takeover import attempt, empty_places, fill_by_rank, release_surplus_start
 
 
 def good_again(dice: Dice, node: Node, entry: Entry, branch: Branch, *, carries: bool) -> list[Branch]:
@@ -57,13 +51,7 @@ def _in_normal_order(dice: Dice, node: Node, entry: Entry, branch: Branch, carri
         return [branch]
     if not carries:
         return [branch]
-    result: list[Branch] = []
-    for placed in _take_empty_place(dice, node, entry, branch, during_outage=False):
-        if node.return_to_preferred:
-            result.extend(return_to_preferred(dice, node, entry, placed))
-        else:
-            result.append(placed)
-    return result
+    return _take_empty_place(dice, node, entry, branch, during_outage=False)
 
 
 def _join_active(node: Node, entry: Entry, branch: Branch, carries: bool) -> None:
@@ -82,7 +70,10 @@ def _take_empty_place(dice: Dice, node: Node, entry: Entry, branch: Branch, *, d
         tried, waits = branch.split(empty_places(node, branch.x) > 0)
         result = [waits] if len(waits) else []
         if len(tried):
-            result.extend(start_one(dice, node, tried, timed=not during_outage))
+            started, refused = attempt(dice, entry, tried)
+            for each in started:
+                each.x[entry.duty if during_outage or not entry.start else entry.start[0]] += 1
+            result += started + refused
         return result
     place = node.on_duty(branch.x) < node.places
     branch.x[entry.duty] += place.astype(np.int16)

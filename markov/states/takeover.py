@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from markov.states.branching import Branch, Dice
-from markov.states.layout import Digits, Entry, Node, Train
+from markov.states.layout import Digits, Entry, Node, Path, Train, node_of, running
 
 
 def start_one(dice: Dice, node: Node, branch: Branch, *, timed: bool = True) -> list[Branch]:
@@ -113,23 +113,32 @@ def _attempt_each(dice: Dice, entry: Entry, count: int, branch: Branch) -> list[
     return done
 
 
-def return_to_preferred(dice: Dice, node: Node, entry: Entry, branch: Branch) -> list[Branch]:
-    """Switch back to a waiting member where one listed later carries duty.
+def return_to_preferred(dice: Dice, path: Path, branch: Branch) -> list[Branch]:
+    """Switch back to waiting members, in rank order, while a member listed later carries duty.
 
-    One start attempt, no draw of coverage, no outage; if it fails, the running member stays.
+    Each is a start attempt, with no draw of coverage and no outage; if it fails, the running member stays and the next
+    waiting member is tried.  Nothing happens in an outage, or in a group that does not carry duty itself.
     """
-    later = [other for other in node.entries if other.rank > entry.rank]
-    running = np.zeros(len(branch), np.bool_)
-    for other in later:
-        running |= branch.x[other.duty] > 0
-    able, settled = branch.split(running & (entry.waiting(branch.x) > 0) & ~node.in_outage(branch.x))
-    done = [settled] if len(settled) else []
-    if len(able):
-        started, refused = attempt(dice, entry, able)
-        done += refused
-        for each in started:
-            _swap(entry, later, each.x)
-            done.append(each.told(f"duty returns to {entry.unit}"))
+    node = node_of(path[-1])
+    done: list[Branch] = []
+    work = [branch]
+    while work:
+        todo = work.pop()
+        for entry in node.entries:
+            later = [other for other in node.entries if other.rank > entry.rank]
+            runs_later = np.zeros(len(todo), np.bool_)
+            for other in later:
+                runs_later |= todo.x[other.duty] > 0
+            able = runs_later & (entry.waiting(todo.x) > 0) & ~node.in_outage(todo.x) & running(path, todo.x)
+            here, todo = todo.split(able)
+            if not len(here):
+                continue
+            started, refused = attempt(dice, entry, here)
+            for each in started:
+                _swap(entry, later, each.x)
+            work += [each.told(f"duty returns to {entry.unit}") for each in started] + refused
+        if len(todo):
+            done.append(todo)
     return done
 
 

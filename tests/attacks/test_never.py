@@ -97,7 +97,6 @@ def test_a_repair_time_of_zero_is_the_contrary(program: Program) -> None:
     assert told.value("steady_state_availability") == 1
 
 
-@pytest.mark.xfail(strict=True, reason="a unit renewed at once that is failed at the start stays failed for ever")
 def test_a_unit_renewed_at_once_is_good_even_if_it_is_failed_at_the_start(program: Program) -> None:
     spec = (
         "units: {lamp: {failure_rate: 1e-3 /h, repair_time: 0 h}}\nsystem: lamp\ninitial: {lamp: failed}\n"
@@ -108,7 +107,6 @@ def test_a_unit_renewed_at_once_is_good_even_if_it_is_failed_at_the_start(progra
     assert told.status == 2 or told.value("steady_state_availability") == 1
 
 
-@pytest.mark.xfail(strict=True, reason="calls less crews than there are at work: a negative number waits, status 4")
 def test_a_unit_renewed_at_once_calls_no_crew(program: Program) -> None:
     told = program.solve(
         pair(repair="repair_time: 0 h")

@@ -542,7 +542,7 @@ class Rules:
         if order == LOST:
             return [(ONE, moment)]
         if order == NORMAL:
-            return self.start_all(moment, group, timed=True) if again else self.take_place(moment, group, item)
+            return self.tried(moment, group, item, True) if again else self.take_place(moment, group, item)
         good = len(self.plant.good_of(moment, group))
         if outcome == "until_repair":
             if good < self.plant.required(group):
@@ -554,13 +554,21 @@ class Rules:
                 return [(ONE, moment)]
             over = self.give_up_starts(moment.order(number, NORMAL), group)
             return self.fill_without_attempts(over, group)
-        if again:
-            taken = self.plant.on_duty(moment, group) + len(self.plant.starting(moment, group))
-            empty = taken < self.plant.places(group)
-            chances = self.start_one(moment, group, timed=False) if empty else [(ONE, moment)]
-        else:
-            chances = self.take_place(moment, group, item)
+        chances = self.tried(moment, group, item, False) if again else self.take_place(moment, group, item)
         return then(chances, lambda after: self.over_if_enough(after, group))
+
+    def tried(self, moment: Moment, group: str, item: int, timed: bool) -> Chances:
+        """A repaired unit has joined the standbys and is tried itself, if a place is empty without a start."""
+        taken = self.plant.on_duty(moment, group) + len(self.plant.starting(moment, group))
+        if taken >= self.plant.places(group):
+            return [(ONE, moment)]
+        tried = replace(moment, starts=(*moment.starts, item))
+        began = (STARTING, 1) if timed and self.plant.takes_time(group) else DUTY
+        return split(
+            self.plant.start_failure(item),
+            lambda: [(ONE, self.fail(tried, item))],
+            lambda: [(ONE, tried.put(item, began))],
+        )
 
     def over_if_enough(self, moment: Moment, group: str) -> Chances:
         """The outage is over once `required` are on duty; places still empty are tried then."""

@@ -13,6 +13,7 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
+import markov
 from markov.model import Model
 from markov.states import GeneratedSpace, generate
 from tests.states.oracle import Spec, TooLarge, enumerate_chain, names, numbers
@@ -1067,7 +1068,7 @@ def test_a_unit_outside_the_system_is_work_for_the_crew_even_if_nobody_waits() -
         "pump",
         crews={"riggers": {"size": 2, "repairs": ["pump", "fan"]}},
     )
-    space = generate(Model.from_mapping(as_mapping(spec)))
-    (pool,) = space.pools(None)
-    share = numbers_of(space, spec)["riggers: busy in the long run"] / pool.size
-    assert share == pytest.approx(13 / 44, rel=1e-9)
+    solution = markov.solve(Model.from_mapping(as_mapping(spec)))
+    assert solution.result("crew_utilisation").value == pytest.approx(13 / 44, rel=1e-13)
+    assert solution.result("waiting_for_crew").value == 0
+    assert solution.result("probability_of_waiting").value == 0
