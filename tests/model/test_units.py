@@ -120,4 +120,4 @@ def test_fix_names_what_is_meant(told, keys, fix):
 def test_a_delay_before_a_repair_that_takes_no_time_is_refused(told):
     problem = told("units: {a: {failure_rate: 1 /h, repair_time: 0 h, logistic_delay: 2 h}}\nsystem: a\n")
     assert "renewed at once" in problem.found
-    assert (problem.line, problem.column) == (1, 53)
+    assert (problem.line, problem.column) == (1, 51)
