@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
+import contextlib
+import io
 import os
 import sys
+from collections.abc import Callable
 from typing import TYPE_CHECKING
 
 import click
 
 from markov._version import __version__
-from markov.errors import MarkovError, NotReached, SpecError, TooLarge
+from markov.errors import MarkovError, NotReached, SpecError, TooLarge, UsageError
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -67,11 +70,11 @@ def solve(spec: str, times: tuple[str, ...], as_json: bool) -> int:
     if as_json:
         from markov.output.as_json import solution_json
 
-        click.echo(solution_json(solution), nl=False)
+        _emit(solution_json(solution))
     else:
         from markov.output.table import print_solution
 
-        print_solution(solution, _console())
+        _emit_printed(lambda console: print_solution(solution, console))
     return solution.exit_status
 
 
@@ -95,11 +98,11 @@ def check(spec: str, as_json: bool) -> int:
     if as_json:
         from markov.output.as_json import check_json
 
-        click.echo(check_json(found), nl=False)
+        _emit(check_json(found))
     else:
         from markov.output.table import print_check
 
-        print_check(found, _console())
+        _emit_printed(lambda console: print_check(found, console))
     return MET
 
 
@@ -162,15 +165,31 @@ def schema() -> int:
 
     from markov.model import json_schema
 
-    click.echo(json.dumps(json_schema(), indent=2, ensure_ascii=False))
+    _emit(json.dumps(json_schema(), indent=2, ensure_ascii=False) + "\n")
     return MET
 
 
-def _console() -> Console:
+def _emit(text: str) -> None:
+    """Write to standard output; a reader that has gone is no fault, and the exit status stays what it is."""
+    try:
+        sys.stdout.write(text)
+        sys.stdout.flush()
+    except BrokenPipeError:
+        _silence()
+    except OSError as error:
+        _silence()
+        raise UsageError(f"standard output cannot be written: {error.strerror or error}") from error
+
+
+def _emit_printed(show: Callable[[Console], None]) -> None:
+    """Write what a function prints on a console that suits standard output."""
     from rich.console import Console
 
     width = None if sys.stdout.isatty() else max(120, int(os.environ.get("COLUMNS", "0") or 0))
-    return Console(width=width, highlight=False, soft_wrap=False)
+    console = Console(width=width, highlight=False, soft_wrap=False)
+    with console.capture() as captured:
+        show(console)
+    _emit(captured.get())
 
 
 def main(arguments: list[str] | None = None) -> int:
@@ -178,6 +197,9 @@ def main(arguments: list[str] | None = None) -> int:
 
     Errors go to standard error; a faulty spec or call prints nothing on standard output.
     """
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")  # names may hold what the terminal cannot show
     try:
         status = app.main(args=arguments, prog_name="markov", standalone_mode=False)
     except SpecError as error:
@@ -196,12 +218,12 @@ def main(arguments: list[str] | None = None) -> int:
     except BrokenPipeError:
         _silence()
         return MET
+    except SystemExit as error:
+        # click ends in this way, with status 1, where the reader of its help has gone
+        gone = type(sys.stdout).__name__.endswith("PacifyFlushWrapper")
+        return MET if gone else int(error.code or 0)
     except Exception as error:
         return _internal(error)
-    try:
-        sys.stdout.flush()
-    except BrokenPipeError:
-        _silence()
     return status if isinstance(status, int) else MET
 
 
@@ -224,4 +246,5 @@ def _internal(error: Exception) -> int:
 
 def _silence() -> None:
     """Let the interpreter end quietly after the reader of standard output has gone."""
-    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    with contextlib.suppress(OSError, ValueError):
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Iterable
 from dataclasses import fields
 from fractions import Fraction
@@ -103,16 +104,15 @@ def draft(path: str | Path) -> Path:
     UsageError
         The file exists, or its folder does not.
     """
+    from markov.output.storing import store
     from markov.spec.draft import draft_text
 
     target = Path(path)
-    try:
-        with target.open("x", encoding="utf-8") as stream:
-            stream.write(draft_text())
-    except FileExistsError:
-        raise UsageError(f"{target} exists; a draft is never written over a file; choose another name") from None
-    except OSError as error:
-        raise UsageError(f"{target} cannot be written: {error.strerror}") from error
+    if not target.parent.is_dir():
+        raise UsageError(f"{target}: there is no folder {target.parent}; make it first")
+    if os.path.lexists(target):
+        raise UsageError(f"{target} exists; a draft is never written over a file; choose another name")
+    store(draft_text().encode(), target)
     return target
 
 

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 from fractions import Fraction
 
 from markov._version import __version__
+from markov.chain import Enclosure
 from markov.errors import IllPosed, NotReached
 from markov.evaluation.gains import GAINS, gain
 from markov.evaluation.questions import Question, all_questions, question_of, subjects_of
@@ -92,6 +94,10 @@ def _result(model: Model, solver: Solver, question: Question) -> Result:
         reason = error.reason
     except NotReached as error:
         reason, reached = f"not reached: {error}", False
+    if found is not None and not math.isfinite(found.value):
+        found, reason, reached = None, "not reached: the value is beyond the range of floating-point numbers", False
+    elif found is not None and found.upper is not None and not math.isfinite(found.upper):
+        found = Enclosure(found.value, None, None, f"{found.method} (no bound from above)")
     return Result(
         measure=question.measure,
         of=question.of,

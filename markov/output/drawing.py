@@ -15,6 +15,7 @@ from markov.output.engines import TIME_LIMIT, Engine, place_boxes
 from markov.output.folding import fold_by_level
 from markov.output.picture import Picture
 from markov.output.skeleton import build_skeleton
+from markov.output.storing import store, taken
 
 ENDINGS = (".svg", ".pdf", ".png", ".dot")
 STATE_LIMIT = 200
@@ -63,7 +64,7 @@ def check_target(target: Path, *, overwrite: bool) -> str:
     if target.is_dir():
         raise UsageError(f"{target} is a folder; expected the name of a file")
     if not overwrite and os.path.lexists(target):
-        raise UsageError(_exists(target))
+        raise UsageError(taken(target))
     return form
 
 
@@ -101,14 +102,14 @@ def write_diagram(
     target = Path(path)
     form = check_target(target, overwrite=overwrite)
     if form == ".dot":
-        _store(dot_text(diagram).encode(), target, overwrite)
+        store(dot_text(diagram).encode(), target, overwrite=overwrite)
         return Drawn(target, "none", ())
     drawable, folded = _drawable(diagram)
     skeleton = build_skeleton(drawable)
     placed = place_boxes(skeleton, engine=engine, time_limit=time_limit)
     picture = compose(drawable, skeleton, placed.heights)
     content, lacking = _content(picture, form)
-    _store(content, target, overwrite)
+    store(content, target, overwrite=overwrite)
     return Drawn(target, placed.engine, (*placed.notes, *folded, _page(picture), *lacking))
 
 
@@ -159,39 +160,3 @@ def _page(picture: Picture) -> str:
         if width <= inner_long and height <= inner_short:
             return f"{size}: fits {name} sideways"
     return f"{size}: larger than {_PAGES[-1][0]}"
-
-
-def _exists(target: Path) -> str:
-    return f"{target} exists already; expected a new name, or leave to overwrite it"
-
-
-def _store(content: bytes, target: Path, overwrite: bool) -> None:
-    """Write `content` beside `target`, then give it its name in one step."""
-    part = target.with_name(f".{target.name[:100]}.{os.getpid()}.part")
-    try:
-        handle = os.open(part, os.O_WRONLY | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0), 0o666)
-        try:
-            with os.fdopen(handle, "wb") as file:
-                file.write(content)
-                file.flush()
-                os.fsync(file.fileno())
-            if overwrite:
-                os.replace(part, target)
-            else:
-                _name_new(part, target)
-        finally:
-            part.unlink(missing_ok=True)
-    except OSError as error:
-        raise DrawingError(f"{target} could not be written: {error.strerror or error}") from error
-
-
-def _name_new(part: Path, target: Path) -> None:
-    """Give `part` its name unless that is taken, even by someone who took it a moment ago."""
-    try:
-        os.link(part, target)
-    except FileExistsError:
-        raise UsageError(_exists(target)) from None
-    except OSError:  # a file system without links
-        if os.path.lexists(target):
-            raise UsageError(_exists(target)) from None
-        os.rename(part, target)

@@ -23,9 +23,9 @@ class Branch:
 
     Attributes
     ----------
-    x : int16[rows, m]
+    x : int32[rows, m]
         Digits reached so far.
-    before : int16[rows, m]
+    before : int32[rows, m]
         Digits of the states that the columns came from; not to be written into.
     origin : int64[m]
         Number of the state that each column came from.

@@ -86,7 +86,7 @@ class Chart:
     Attributes
     ----------
     layout : Layout
-    digits : int16[rows, k]
+    digits : int32[rows, k]
         The k states; column 0 is the state with all good and duty filled by rank unless told otherwise.
     start : int
         Number of the initial state.
@@ -138,7 +138,7 @@ def build_chart(layout: Layout, kinds: ArrowKinds, start: Digits, local_crews: f
     layout : Layout
     kinds : ArrowKinds
         Receives the arrow kinds.
-    start : int16[rows, 1]
+    start : int32[rows, 1]
         Initial state.
     local_crews : set of int
         Slots whose every failed item has a crew at once; their repairs happen by themselves.
@@ -325,7 +325,7 @@ def _table(stores: list[_Raw], kinds: ArrowKinds, known: _Known, size: int) -> T
     return Table(first, target[order], kind[order], multiple[order])
 
 
-def slot_counts(slot: Slot, digits: Digits) -> list[NDArray[np.int16]]:
+def slot_counts(slot: Slot, digits: Digits) -> list[NDArray[np.int32]]:
     """Return the items under repair, or calling for it, by finished stages; each shape (k,)."""
     rows = slot.serve if slot.explicit_queue else slot.down
     return [digits[row] for row in rows]

@@ -26,7 +26,7 @@ from markov.states.takeover import fill_by_rank, return_to_preferred
 from markov.states.trains import carry_upward
 
 Mode = Literal["always", "system_up", "system_down"]
-Exposed = Callable[[Digits], NDArray[np.int16]]
+Exposed = Callable[[Digits], NDArray[np.int32]]
 Apply = Callable[[Branch], list[Branch]]
 
 
@@ -180,8 +180,8 @@ def _stands_where_duty_is(path: Path, train: Train, x: Digits) -> NDArray[np.boo
     return np.asarray(designated(path, train, x) > 0)
 
 
-def _waiting(path: Path, entry: Entry, x: Digits) -> NDArray[np.int16]:
-    return (entry.good(x) - designated(path, entry, x) - entry.starting(x)).astype(np.int16)
+def _waiting(path: Path, entry: Entry, x: Digits) -> NDArray[np.int32]:
+    return (entry.good(x) - designated(path, entry, x) - entry.starting(x)).astype(np.int32)
 
 
 def _lost_start(dice: Dice, node: Node, slot: Slot, stage: int, branch: Branch) -> list[Branch]:
@@ -284,12 +284,12 @@ def _upward(dice: Dice, path: Path, apply: Apply) -> Apply:
     return both
 
 
-def _row(row: int, x: Digits) -> NDArray[np.int16]:
+def _row(row: int, x: Digits) -> NDArray[np.int32]:
     return np.asarray(x[row])
 
 
-def _times(condition: Callable[[Digits], NDArray[np.bool_]], count: Exposed, x: Digits) -> NDArray[np.int16]:
-    return (condition(x) * count(x)).astype(np.int16)
+def _times(condition: Callable[[Digits], NDArray[np.bool_]], count: Exposed, x: Digits) -> NDArray[np.int32]:
+    return (condition(x) * count(x)).astype(np.int32)
 
 
 def _move(source: int, target: int, branch: Branch) -> list[Branch]:

@@ -50,7 +50,7 @@ def idle_fault(slot: Slot, branch: Branch, *, stage: int = -1, designated: bool 
     if stage >= 0:
         branch.x[slot.start[stage]] -= 1
     elif designated and slot.duty >= 0:
-        branch.x[slot.duty] -= (branch.x[slot.duty] > 0).astype(np.int16)
+        branch.x[slot.duty] -= (branch.x[slot.duty] > 0).astype(np.int32)
     branch.x[slot.entry_row] += 1
     return [branch]
 
@@ -84,7 +84,7 @@ def _coverage_entries(node: Node, branch: Branch) -> Iterator[tuple[Factor | Non
         yield (node.coverage[0] if node.coverage else None), branch
         return
     last = len(node.coverage) - 1
-    failed_before: NDArray[np.int16] = node.failed(branch.before)
+    failed_before: NDArray[np.int32] = node.failed(branch.before)
     for entry, chance in enumerate(node.coverage):
         here = failed_before == entry if entry < last else failed_before >= last
         if here.any():

@@ -34,7 +34,7 @@ from numpy.typing import NDArray
 
 from markov.rates import Factor
 
-Digits = NDArray[np.int16]
+Digits = NDArray[np.int32]
 """Digit matrix, shape (rows, m): one column a state."""
 
 
@@ -92,7 +92,7 @@ class Slot:
 
     def good(self, x: Digits) -> Digits:
         """Count items that are not failed, shape (m,)."""
-        good: Digits = np.subtract(self.count, self.failed(x), dtype=np.int16)
+        good: Digits = np.subtract(self.count, self.failed(x), dtype=np.int32)
         return good
 
     def starting(self, x: Digits) -> Digits:
@@ -101,7 +101,7 @@ class Slot:
 
     def waiting(self, x: Digits) -> Digits:
         """Count good items that neither carry duty nor are being started, shape (m,); standby groups only."""
-        waiting: Digits = np.subtract(self.good(x), x[self.duty] + self.starting(x), dtype=np.int16)
+        waiting: Digits = np.subtract(self.good(x), x[self.duty] + self.starting(x), dtype=np.int32)
         return waiting
 
     def calling(self, x: Digits) -> Digits:
@@ -134,11 +134,11 @@ class Train:
         """Tell where the train's own criterion holds: carried out on duty, possible while it waits; shape (m,)."""
         node = self.node
         able = (node.good(x) >= node.required) & ~node.in_outage(x) & ~node.switching_now(x)
-        return np.asarray(np.where(x[self.duty] > 0, node.delivers(x), able), np.int16)
+        return np.asarray(np.where(x[self.duty] > 0, node.delivers(x), able), np.int32)
 
     def failed(self, x: Digits) -> Digits:
         """Tell where the criterion is lost, shape (m,)."""
-        return (1 - self.good(x)).astype(np.int16)
+        return (1 - self.good(x)).astype(np.int32)
 
     def starting(self, x: Digits) -> Digits:
         """Tell where the switchover to the train is under way, shape (m,)."""
@@ -147,7 +147,7 @@ class Train:
     def waiting(self, x: Digits) -> Digits:
         """Tell where the train is good, off duty and not being switched in, shape (m,)."""
         idle = (x[self.duty] == 0) & (self.starting(x) == 0)
-        return np.where(idle, self.good(x), 0).astype(np.int16)
+        return np.where(idle, self.good(x), 0).astype(np.int32)
 
 
 Entry = Slot | Train
@@ -196,7 +196,7 @@ class Node:
     def waiting(self, x: Digits) -> Digits:
         """Count good members that wait to be called, shape (m,); zero in an active group."""
         if self.active:
-            return np.zeros(x.shape[1], np.int16)
+            return np.zeros(x.shape[1], np.int32)
         return _sum([entry.waiting(x) for entry in self.entries], x)
 
     def in_outage(self, x: Digits) -> NDArray[np.bool_]:
@@ -251,7 +251,7 @@ def designated(path: Path, entry: Entry, x: Digits) -> Digits:
     placed = running(path, x) | (node.on_duty(x) > 0)  # also a train that is being switched in
     before = _sum([other.good(x) for other in node.entries if other.rank < entry.rank], x)
     by_rank = np.clip(node.places - before, 0, entry.good(x))
-    return np.where(placed, x[entry.duty], by_rank).astype(np.int16)
+    return np.where(placed, x[entry.duty], by_rank).astype(np.int32)
 
 
 @dataclass(frozen=True)
@@ -295,7 +295,7 @@ class Layout:
 
     def empty(self) -> Digits:
         """Return one column of zeros, shape (rows, 1)."""
-        return np.zeros((len(self.tops), 1), np.int16)
+        return np.zeros((len(self.tops), 1), np.int32)
 
 
 @dataclass
@@ -319,16 +319,16 @@ class RowCounter:
 def total(x: Digits, rows: tuple[int, ...]) -> Digits:
     """Sum some rows, shape (m,)."""
     if not rows:
-        return np.zeros(x.shape[1], np.int16)
-    return np.asarray(x[rows[0]] if len(rows) == 1 else x[list(rows)].sum(axis=0, dtype=np.int16))
+        return np.zeros(x.shape[1], np.int32)
+    return np.asarray(x[rows[0]] if len(rows) == 1 else x[list(rows)].sum(axis=0, dtype=np.int32))
 
 
 def _sum(parts: list[Digits], x: Digits) -> Digits:
     if not parts:
-        return np.zeros(x.shape[1], np.int16)
+        return np.zeros(x.shape[1], np.int32)
     result = parts[0]
     for part in parts[1:]:
-        result = (result + part).astype(np.int16)
+        result = (result + part).astype(np.int32)
     return result
 
 

@@ -76,7 +76,7 @@ def _take_empty_place(dice: Dice, node: Node, entry: Entry, branch: Branch, *, d
             result += started + refused
         return result
     place = node.on_duty(branch.x) < node.places
-    branch.x[entry.duty] += place.astype(np.int16)
+    branch.x[entry.duty] += place.astype(np.int32)
     if isinstance(entry, Train):
         fill_by_rank(entry.node, branch.x, place)
     release_surplus_start(node, branch.x)

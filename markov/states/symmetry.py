@@ -32,7 +32,7 @@ def interchangeable(
     Parameters
     ----------
     layouts : tuple of Layout
-    starts : tuple of int16[rows, 1]
+    starts : tuple of int32[rows, 1]
         Initial state of each.
     success : Success or None
     named : set of str

@@ -147,7 +147,7 @@ def _swap(entry: Entry, later: list[Entry], x: Digits) -> None:
     open_columns = np.ones(x.shape[1], np.bool_)
     for other in reversed(later):
         here = open_columns & (x[other.duty] > 0)
-        x[other.duty] -= here.astype(np.int16)
+        x[other.duty] -= here.astype(np.int32)
         if isinstance(other, Train):
             stand_down(other.node, x, here)
         open_columns &= ~here
@@ -167,12 +167,12 @@ def fill_by_rank(node: Node, x: Digits, where: NDArray[np.bool_] | None = None) 
     for entry in node.entries:
         if not node.active:
             free = np.maximum(node.places - node.on_duty(x), 0)
-            added = np.where(here, np.minimum(free, entry.waiting(x)), 0).astype(np.int16)
+            added = np.where(here, np.minimum(free, entry.waiting(x)), 0).astype(np.int32)
             x[entry.duty] += added
             if isinstance(entry, Train):
                 fill_by_rank(entry.node, x, added > 0)
         elif isinstance(entry, Train):
-            added = (here & (entry.waiting(x) > 0)).astype(np.int16)
+            added = (here & (entry.waiting(x) > 0)).astype(np.int32)
             x[entry.duty] += added
             fill_by_rank(entry.node, x, added > 0)
 
@@ -190,9 +190,9 @@ def stand_down(node: Node, x: Digits, where: NDArray[np.bool_] | None = None) ->
             stand_down(entry.node, x, where)
 
 
-def empty_places(node: Node, x: Digits) -> NDArray[np.int16]:
+def empty_places(node: Node, x: Digits) -> NDArray[np.int32]:
     """Count duty places that are neither filled nor about to be by a start under way, shape (m,)."""
-    return (node.places - node.on_duty(x) - node.starting(x)).astype(np.int16)
+    return (node.places - node.on_duty(x) - node.starting(x)).astype(np.int32)
 
 
 def release_surplus_start(node: Node, x: Digits) -> None:
@@ -204,7 +204,7 @@ def release_surplus_start(node: Node, x: Digits) -> None:
     for entry in reversed(node.entries):
         for row in entry.start:
             here = surplus & (x[row] > 0)
-            x[row] -= here.astype(np.int16)
+            x[row] -= here.astype(np.int32)
             if isinstance(entry, Train):
                 stand_down(entry.node, x, here)
             surplus &= ~here

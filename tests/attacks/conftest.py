@@ -8,8 +8,6 @@ from tests.cli.program import Program
 
 
 @pytest.fixture
-def program(
-    tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
-) -> Program:
+def program(tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> Program:
     monkeypatch.chdir(tmp_path)
     return Program(tmp_path, capsys, monkeypatch)

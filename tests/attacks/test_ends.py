@@ -19,9 +19,7 @@ LONG_RUN = {
 
 
 def asking(measures: dict[str, str]) -> str:
-    return "targets:\n" + "".join(
-        f"  - {{id: {name}, measure: {name}, {limit}}}\n" for name, limit in measures.items()
-    )
+    return "targets:\n" + "".join(f"  - {{id: {name}, measure: {name}, {limit}}}\n" for name, limit in measures.items())
 
 
 # --- attack 18: a long-run value with absorbing down states
@@ -98,9 +96,7 @@ mission: {time: 10 h}
 
 @pytest.mark.parametrize("spec", [FORK, LIVE_OR_DIE], ids=["two ways to live", "live or die"])
 @pytest.mark.parametrize("measure", ["steady_state_availability", "downtime_per_year", "mean_up_time", "mean_capacity"])
-def test_a_long_run_that_depends_on_chance_has_a_reason_and_no_value(
-    program: Program, spec: str, measure: str
-) -> None:
+def test_a_long_run_that_depends_on_chance_has_a_reason_and_no_value(program: Program, spec: str, measure: str) -> None:
     told = program.solve(spec + asking({measure: LONG_RUN[measure]}))
     assert (told.status, told.verdicts) == (3, {measure: "undecided"})
     assert told.value(measure) is None

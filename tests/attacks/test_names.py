@@ -22,13 +22,13 @@ NAMES = [
     "+1",
     "-1",
     "@SUM(A1)",
-    "=HYPERLINK(\"http://x\",\"y\")",
+    '=HYPERLINK("http://x","y")',
     "насос № 2",
     "給水ポンプ",
     "مضخة",
     "{curly}",
     "back\\slash\\n",
-    "it's \"quoted\"",
+    'it\'s "quoted"',
     "a]]>b",
     "%s %d {0}",
     "../../etc/passwd",
@@ -72,9 +72,7 @@ def test_a_name_survives_in_json(program: Program, name: str) -> None:
 
 
 @pytest.mark.parametrize("name", NAMES)
-def test_a_name_survives_in_the_table(
-    program: Program, monkeypatch: pytest.MonkeyPatch, name: str
-) -> None:
+def test_a_name_survives_in_the_table(program: Program, monkeypatch: pytest.MonkeyPatch, name: str) -> None:
     monkeypatch.setenv("COLUMNS", "400")
     out = program.table(spec(name)).out
     assert out.splitlines()[0].rstrip() == name
@@ -92,7 +90,8 @@ def test_a_name_that_is_long_is_folded_and_not_cut(program: Program) -> None:
     out = program.table(spec(name)).out
     assert "…" not in out
     assert out.splitlines()[0].rstrip() == name
-    assert out.count("x") >= 60 * 10
+    noted = out.split("\nWarnings\n")[1].split("\nCautions\n")[0]
+    assert flat(f"parameters.{name} unused") in flat(noted)
 
 
 @pytest.mark.parametrize("name", NAMES)
@@ -102,9 +101,9 @@ def test_a_name_survives_in_a_drawing_that_parses(program: Program, name: str) -
     root = ET.parse("plant.svg").getroot()
     words = [element.text or "" for element in root.iter()]
     assert not any(element.tag.endswith("script") for element in root.iter())
-    assert name in words or any(name in word for word in words)
+    assert any(name in word for word in words)
     everything = flat("".join(words))
-    assert flat(f"{name} u: waiting") in everything or flat(f"{name} u") in everything
+    assert flat(f"{name} u: 2 failed") in everything
     assert flat(f"{name} p") in everything
 
 
@@ -119,11 +118,10 @@ def test_a_name_survives_in_graphviz_source(program: Program, name: str) -> None
     assert not set("<>|$№=*") & set(re.sub(r"->|[a-z]+=", "", bare))
 
 
-@pytest.mark.parametrize("name", NAMES)
-@pytest.mark.parametrize("ending", ["pdf", "png"])
-def test_a_name_stops_no_drawing(program: Program, name: str, ending: str) -> None:
-    if ending == "png" and NAMES.index(name) % 5:
-        pytest.skip("one in five pictures is enough")
+@pytest.mark.parametrize(
+    ("ending", "name"), [*(("pdf", name) for name in NAMES), *(("png", name) for name in NAMES[::5])]
+)
+def test_a_name_stops_no_drawing(program: Program, ending: str, name: str) -> None:
     assert program("draw", program.file(spec(name)), f"plant.{ending}").status == 0
 
 

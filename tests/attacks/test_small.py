@@ -130,4 +130,6 @@ def test_tiny_numbers_are_printed_as_such(program: Program) -> None:
         "units: {pump: {failure_rate: 1e-6 /h}}\n"
         "groups: {feed: {members: [{unit: pump, count: 5}], redundancy: active}}\nsystem: feed\nmission: {time: 10 h}\n"
     ).out
-    assert any(line.split()[0] == "unreliability," and "9.99975e-26" in line for line in out.splitlines() if line.strip())
+    assert any(
+        line.split()[0] == "unreliability," and "9.99975e-26" in line for line in out.splitlines() if line.strip()
+    )

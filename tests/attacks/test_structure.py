@@ -39,19 +39,18 @@ mission: {{time: 100 h}}
 
 
 def test_a_unit_in_two_groups_stands_for_different_items(program: Program) -> None:
-    shared = program.solve(IN_TWO.format(second="", right="lamp"))
+    together = program.solve(IN_TWO.format(second="", right="lamp"))
     apart = program.solve(
         IN_TWO.format(second=", lantern: {failure_rate: 1e-3 /h, repair_time: 10 h}", right="lantern")
     )
-    same_numbers(shared, apart)
+    same_numbers(together, apart)
     # Four independent items, down while all four are failed: one pair of them is not counted twice.
-    assert holds(shared.result("steady_state_unavailability"), Fraction(1, 101) ** 4)
+    assert holds(together.result("steady_state_unavailability"), Fraction(1, 101) ** 4)
 
 
 def test_items_of_a_unit_in_two_groups_are_counted_together_for_the_unit(program: Program) -> None:
     told = program.solve(
-        IN_TWO.format(second="", right="lamp")
-        + "targets: [{id: T, measure: mean_units_failed, of: lamp, at_most: 1},"
+        IN_TWO.format(second="", right="lamp") + "targets: [{id: T, measure: mean_units_failed, of: lamp, at_most: 1},"
         " {id: A, measure: availability, of: lamp, at_least: 0.5}]\n"
     )
     assert holds(told.result("mean_units_failed", of="lamp"), Fraction(4, 101))
@@ -274,18 +273,15 @@ def test_two_halves_in_series_are_as_reliable_as_the_whole(program: Program) -> 
     same_numbers(whole, grouped, ("reliability", "unreliability", "mean_time_to_first_failure", "hazard_rate"))
 
 
-@pytest.mark.parametrize(
-    "redundancy", ["active", "hot_standby", "cold_standby", "warm_standby, dormancy_factor: 0.3"]
-)
+@pytest.mark.parametrize("redundancy", ["active", "hot_standby", "cold_standby", "warm_standby, dormancy_factor: 0.3"])
 @pytest.mark.parametrize("coverage", ["1", "0.8"])
 def test_a_train_of_two_halves_is_as_reliable_as_the_whole(program: Program, redundancy: str, coverage: str) -> None:
     more = f"redundancy: {redundancy}, switchover: {{coverage: {coverage}, uncovered: {{outcome: lost}}}}"
-    whole = program.solve(
-        WHOLE + f"groups: {{g: {{members: [{{unit: pump, count: 2}}], {more}}}}}\nsystem: g\n" + FAR
-    )
+    whole = program.solve(WHOLE + f"groups: {{g: {{members: [{{unit: pump, count: 2}}], {more}}}}}\nsystem: g\n" + FAR)
     halves = program.solve(
         HALVES + "groups:\n  first: {members: [top, bottom], required: 2}\n"
-        f"  second: {{members: [top, bottom], required: 2}}\n  g: {{members: [first, second], {more}}}\nsystem: g\n" + FAR
+        f"  second: {{members: [top, bottom], required: 2}}\n  g: {{members: [first, second], {more}}}\nsystem: g\n"
+        + FAR
     )
     measures = ("unreliability", "mean_time_to_first_failure", "hazard_rate")
     same_numbers(whole, halves, measures)

@@ -23,9 +23,17 @@ def test_at_time_zero_the_plant_is_as_it_starts(program: Program, how: str) -> N
     elif how == "at":
         told = program.solve(LAMP, "--at", "0 h")
     else:
-        measures = ("reliability", "unreliability", "availability", "unavailability", "expected_failures", "hazard_rate")
+        measures = (
+            "reliability",
+            "unreliability",
+            "availability",
+            "unavailability",
+            "expected_failures",
+            "hazard_rate",
+        )
         asked = [
-            f"{{id: {name}, measure: {name}, at: 0 h, at_most: {'1 /h' if name == 'hazard_rate' else 1}}}" for name in measures
+            f"{{id: {name}, measure: {name}, at: 0 h, at_most: {'1 /h' if name == 'hazard_rate' else 1}}}"
+            for name in measures
         ]
         told = program.solve(LAMP + f"targets: [{', '.join(asked)}]\n")
     for measure, exact in (

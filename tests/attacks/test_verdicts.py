@@ -94,8 +94,6 @@ THIRDS = "units: {lamp: {failure_rate: 1e-3 /h, repair_time: 7 h}}\nsystem: lamp
 BOUNDED = ["steady_state_unavailability", "unreliability", "mean_up_time", "failures_per_year", "reliability"]
 
 
-
-
 @pytest.mark.parametrize("measure", BOUNDED)
 @pytest.mark.parametrize("direction", ["at_least", "at_most"])
 def test_a_bound_across_the_target_is_undecided_and_says_so(program: Program, measure: str, direction: str) -> None:

@@ -31,9 +31,7 @@ class Told:
         (found,) = (
             each
             for each in self.json["results"]
-            if each["measure"] == measure
-            and each["of"] == of
-            and (at_hours is None or each["at_hours"] == at_hours)
+            if each["measure"] == measure and each["of"] == of and (at_hours is None or each["at_hours"] == at_hours)
         )
         return found
 

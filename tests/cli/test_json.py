@@ -30,7 +30,9 @@ HAND = """
 states: {good: {up: true, initial: true}, safe: {up: true}, lost: {up: false}}
 transitions: [{from: good, to: safe, rate: 1e-3 /h}, {from: good, to: lost, rate: 1e-3 /h}]
 mission: {time: 100 h}
-targets: [{id: A, measure: mean_down_time, at_most: 1 h}, {id: B, measure: state_probability, state: safe, at_most: 0.6}]
+targets:
+  - {id: A, measure: mean_down_time, at_most: 1 h}
+  - {id: B, measure: state_probability, state: safe, at_most: 0.6}
 """
 # Wherever the spec has no crews, tests, demands and so on, measures of theirs do not apply.
 EVERYWHERE = {

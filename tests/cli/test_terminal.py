@@ -33,9 +33,7 @@ def test_a_pipe_gets_plain_text(program: Program) -> None:
     assert "\x1b" not in program.table(LAMP).out
 
 
-def test_a_terminal_gets_colours_unless_they_are_unwanted(
-    program: Program, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_a_terminal_gets_colours_unless_they_are_unwanted(program: Program, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setenv("TERM", "xterm-256color")
     monkeypatch.setenv("FORCE_COLOR", "1")
     coloured = program.table(LAMP).out
@@ -171,7 +169,13 @@ def test_the_first_line_of_a_pipe_is_enough(program: Program, checkout: Path) ->
 
 def _under(encoding: str, program: Program, checkout: Path, *options: str) -> tuple[int, str]:
     with _started(
-        program.folder, checkout, "solve", "plant.yaml", *options, stdout=subprocess.PIPE, env={"PYTHONIOENCODING": encoding}
+        program.folder,
+        checkout,
+        "solve",
+        "plant.yaml",
+        *options,
+        stdout=subprocess.PIPE,
+        env={"PYTHONIOENCODING": encoding},
     ) as process:
         out, _ = process.communicate(timeout=60)
     return process.returncode, out
@@ -182,9 +186,7 @@ TABLE_OF_ANY_NAME = pytest.mark.xfail(
 )
 
 
-@pytest.mark.parametrize(
-    "options", [pytest.param((), marks=TABLE_OF_ANY_NAME), ("--json",)], ids=["table", "json"]
-)
+@pytest.mark.parametrize("options", [pytest.param((), marks=TABLE_OF_ANY_NAME), ("--json",)], ids=["table", "json"])
 def test_names_that_the_terminal_cannot_show_do_not_stop_the_program(
     program: Program, checkout: Path, options: tuple[str, ...]
 ) -> None:
@@ -198,9 +200,11 @@ def test_names_that_the_terminal_cannot_show_do_not_stop_the_program(
 @pytest.mark.xfail(strict=True, reason="a full disk under standard output is called a fault of the program")
 def test_a_full_disk_is_not_called_a_fault_of_the_program(program: Program, checkout: Path) -> None:
     program.file(MET)
-    with open("/dev/full", "w") as full:
-        with _started(program.folder, checkout, "solve", "plant.yaml", stdout=full) as process:
-            _, err = process.communicate(timeout=60)
+    with (
+        open("/dev/full", "w") as full,
+        _started(program.folder, checkout, "solve", "plant.yaml", stdout=full) as process,
+    ):
+        _, err = process.communicate(timeout=60)
     assert process.returncode not in (0, 1)
     assert "No space left" in err
     assert "fault of the program" not in err
@@ -238,9 +242,7 @@ def test_an_interrupt_while_solving_prints_nothing(program: Program, monkeypatch
     assert told.status not in range(5)
 
 
-@pytest.mark.parametrize(
-    "moment", ["markov.output.drawing.place_boxes", "markov.output.drawing._content", "os.fsync"]
-)
+@pytest.mark.parametrize("moment", ["markov.output.drawing.place_boxes", "markov.output.drawing._content", "os.fsync"])
 @pytest.mark.parametrize("before", [None, "mine"], ids=["new file", "existing file"])
 def test_an_interrupt_while_drawing_leaves_the_folder_as_it_was(
     program: Program, monkeypatch: pytest.MonkeyPatch, moment: str, before: str | None
