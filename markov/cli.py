@@ -185,11 +185,11 @@ def _emit_printed(show: Callable[[Console], None]) -> None:
     """Write what a function prints on a console that suits standard output."""
     from rich.console import Console
 
-    width = None if sys.stdout.isatty() else max(120, int(os.environ.get("COLUMNS", "0") or 0))
-    console = Console(width=width, highlight=False, soft_wrap=False)
-    with console.capture() as captured:
-        show(console)
-    _emit(captured.get())
+    on_terminal = sys.stdout.isatty()
+    width = None if on_terminal else max(120, int(os.environ.get("COLUMNS", "0") or 0))
+    page = io.StringIO()
+    show(Console(file=page, force_terminal=on_terminal, width=width, highlight=False, soft_wrap=False))
+    _emit(page.getvalue())
 
 
 def main(arguments: list[str] | None = None) -> int:

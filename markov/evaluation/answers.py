@@ -310,6 +310,8 @@ class Answers:
         survivors = self._reliability(question)
         if survivors.upper == 0:
             raise IllPosed("nothing survives to this time, so there is no hazard")
+        if survivors.lower == 0 and survivors.upper is not None:
+            raise IllPosed(f"the chance to survive to this time is below {survivors.upper:.0e}, too small to divide by")
         return alive.weighted(self._failure_flow(question.of)) / survivors
 
     def _mean_failure_rate(self, question: Question) -> Enclosure:

@@ -80,7 +80,7 @@ def plan(model: Model, subjects: tuple[str, ...] = ()) -> Plan:
         kinds = tuple(
             PoolKind(unit, places, layouts[places[0][0]].slots[places[0][1]].explicit_queue)
             for unit in crew.order
-            if (places := bare.places_of(unit))
+            if (places := bare.places_of(unit)) and layouts[places[0][0]].slots[places[0][1]].repair is not None
         )
         if kinds:
             (busy if name in contended else free).append(Pool(name, crew.size, kinds))
