@@ -188,7 +188,7 @@ def _emit_printed(show: Callable[[Console], None]) -> None:
     on_terminal = sys.stdout.isatty()
     width = None if on_terminal else max(120, int(os.environ.get("COLUMNS", "0") or 0))
     page = io.StringIO()
-    show(Console(file=page, force_terminal=on_terminal, width=width, highlight=False, soft_wrap=False))
+    show(Console(file=page, force_terminal=on_terminal or None, width=width, highlight=False, soft_wrap=False))
     _emit(page.getvalue())
 
 

@@ -41,7 +41,7 @@ from markov.errors import IllPosed, NotReached, TooLarge, UsageError
 LARGEST_PATTERN = 400_000
 
 #: Floats of one block of samples: what the last cache holds; smaller blocks lose more to calls than they gain.
-_BLOCK = 1 << 19
+_BLOCK = 1 << 20
 
 
 #: Products ``first .. last - 1`` are added to the values from a place on, side by side: (first, last, place).
@@ -138,7 +138,7 @@ class Compiled:
         if self.ground is not None:
             raise UsageError("a chain that is left needs a pattern compiled without a ground")
         count = _samples(rates)
-        first, earned = _per_sample(start, self.n, count), _per_sample(1.0 if reward is None else reward, self.n, count)
+        first, earned = per_sample(start, self.n, count), per_sample(1.0 if reward is None else reward, self.n, count)
         spent, visits, rewards = np.empty((3, self.n, count))
         for part, block in self._blocks(rates):
             with _watched():
@@ -265,7 +265,7 @@ def _samples(rates: ArrayLike) -> int:
     return int(shape[1])
 
 
-def _per_sample(values: ArrayLike, n: int, count: int) -> Floats:
+def per_sample(values: ArrayLike, n: int, count: int) -> Floats:
     given = np.asarray(values, dtype=np.float64)
     if given.ndim == 1:
         given = given[:, None]
