@@ -217,9 +217,7 @@ class Answers:
         return _MEASURES[question.measure](self, question)
 
     def _reliability(self, question: Question) -> Enclosure:
-        at = _time(question)
-        alive = self._alive_at(at, question.of).weighted(np.ones(self.space.size)).capped()
-        return alive.meet(self._failed_by(at, question.of).complement()) if alive.lower is not None else alive
+        return self._stopped_at_failure(question.of).alive[self._times.index(_time(question))]
 
     def _unreliability(self, question: Question) -> Enclosure:
         return self._failed_by(_time(question), question.of)
