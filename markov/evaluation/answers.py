@@ -88,8 +88,8 @@ class Answers:
     @cached_property
     def start(self) -> int | Vector:
         """Initial state, or distribution over states where crews draw among equals at time zero."""
-        if len(self.space.start) == 1:
-            return self.space.start[0][0]
+        if len(self._start_states) == 1:
+            return self._start_states[0]
         values = np.zeros(self.space.size)
         for state, chance in self.space.start:
             values[state] = float(chance)

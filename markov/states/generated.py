@@ -374,9 +374,19 @@ def generate_prepared(prepared: Prepared, *, limit: int = STATE_LIMIT) -> Genera
     island_of = {layout.node.name: number for number, layout in enumerate(drawn.islands)}
     system = drawn.model.system
     found = explore(charts, desk, prepared.kinds, system, island_of, classes=prepared.classes, limit=limit)
-    start = tuple((state, Fraction(weight, choices)) for state, weight, choices in found.start)
+    start: dict[int, Fraction] = {}
+    for state, weight, choices in found.start:  # several draws may lead to one state where groups are merged
+        start[state] = start.get(state, Fraction(0)) + Fraction(weight, choices)
     return GeneratedSpace(
-        drawn, charts, desk, Packing(charts), found.keys, found.arrows, prepared.kinds, start, prepared.classes
+        drawn,
+        charts,
+        desk,
+        Packing(charts),
+        found.keys,
+        found.arrows,
+        prepared.kinds,
+        tuple(start.items()),
+        prepared.classes,
     )
 
 
