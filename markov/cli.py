@@ -135,8 +135,10 @@ def draw(spec: str, picture: str, values: bool, overwrite: bool) -> int:
         tell(f"drawing {space.size:,} states")
         drawn = write_diagram(state_diagram(model, space, values=values), Path(picture), overwrite=overwrite)
     for note in drawn.notes:
-        click.echo(f"markov: {note}", err=True)
-    click.echo(f"{drawn.path}: {space.size:,} states, laid out by {drawn.engine}", err=True)
+        if not note.endswith(": not found"):  # an engine that is not there is no news where another did the work
+            click.echo(f"markov: {note}", err=True)
+    engine = "" if drawn.engine == "none" else f", laid out by {drawn.engine}"
+    click.echo(f"{drawn.path}: {space.size:,} states{engine}", err=True)
     return MET
 
 
@@ -171,6 +173,8 @@ def schema() -> int:
 
 def _emit(text: str) -> None:
     """Write to standard output; a reader that has gone is no fault, and the exit status stays what it is."""
+    if sys.stdout is None:
+        raise UsageError("there is no standard output to write to")
     try:
         sys.stdout.write(text)
         sys.stdout.flush()
@@ -185,7 +189,7 @@ def _emit_printed(show: Callable[[Console], None]) -> None:
     """Write what a function prints on a console that suits standard output."""
     from rich.console import Console
 
-    on_terminal = sys.stdout.isatty()
+    on_terminal = sys.stdout is not None and sys.stdout.isatty()
     width = None if on_terminal else max(120, int(os.environ.get("COLUMNS", "0") or 0))
     page = io.StringIO()
     show(Console(file=page, force_terminal=on_terminal or None, width=width, highlight=False, soft_wrap=False))

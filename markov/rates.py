@@ -15,6 +15,8 @@ from fractions import Fraction
 import numpy as np
 from numpy.typing import NDArray
 
+from markov.quantities import Quantity
+
 
 @dataclass(frozen=True)
 class Factor:
@@ -34,6 +36,11 @@ class Factor:
         Whether it is a probability or another plain factor, not a rate.
     base : Factor or None
         What this factor is the complement of.
+    quantity : Quantity or None
+        What the spec says, for a factor that is no complement: the factor is `stages` times it, or `stages` divided by
+        it where `is_reciprocal`.  Says nothing about which factors are equal.
+    stages : int
+    is_reciprocal : bool
     """
 
     symbol: str
@@ -42,6 +49,9 @@ class Factor:
     origin: str
     is_share: bool = False
     base: Factor | None = None
+    quantity: Quantity | None = field(default=None, compare=False, repr=False)
+    stages: int = field(default=1, compare=False, repr=False)
+    is_reciprocal: bool = field(default=False, compare=False, repr=False)
 
     def complement(self) -> Factor:
         """Return one minus this probability, exact."""

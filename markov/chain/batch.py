@@ -266,6 +266,7 @@ def _samples(rates: ArrayLike) -> int:
 
 
 def per_sample(values: ArrayLike, n: int, count: int) -> Floats:
+    """Return values per state, given once or for each sample, as float64[n, s]."""
     given = np.asarray(values, dtype=np.float64)
     if given.ndim == 1:
         given = given[:, None]

@@ -54,6 +54,9 @@ from markov.chain.generator import Generator
 from markov.chain.poisson import needed_terms, short_poisson
 from markov.errors import NotReached
 
+#: Each doubling may cost a binary digit of 104; beyond this no bound could hold, and the work would not end.
+MOST_DOUBLINGS = 160
+
 #: What truncating all series together may cost absolutely.
 _TRUNCATION = 1e-100
 #: Covers products of errors and the rounding of the errors themselves while they stay below 1e-10.
@@ -180,6 +183,8 @@ def build(
     exponent, jumps, jumps_relative = _uniform(chain, loss, loss_error)
     parts = [_parts(exponent, time) for time in times]
     count = max((whole.bit_length() for whole, _ in parts), default=0)
+    if count > MOST_DOUBLINGS:
+        raise NotReached(f"a time that takes {count} doublings; at most {MOST_DOUBLINGS} keep any digits")
     furthest = Fraction(1) if count else max((rest for _, rest in parts), default=Fraction(0))
     terms = max(1, needed_terms(furthest, math.ldexp(_TRUNCATION, -count)))
     ladder = Ladder(exponent, jumps, jumps_relative, rewards, rewards_error, terms, ())

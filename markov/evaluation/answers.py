@@ -138,7 +138,7 @@ class Answers:
         dead = [not up[each.members].any() for each in self._classes]
         if any(dead) and not all(dead):
             raise IllPosed("some histories end down for good and others live on, so there is no one long-run value")
-        raise IllPosed("the chain can end in several ways, so the long-run value depends on chance or on the start")
+        raise IllPosed("the chain can end in several ways for good, and each has a long-run value of its own")
 
     def long_run_share(self, states: Mask) -> Enclosure:
         """Return the long-run share of time in some states."""
@@ -280,7 +280,7 @@ class Answers:
             raise IllPosed("no down state can be reached")
         frequency = self._failure_frequency(question)
         if frequency.upper == 0:
-            raise IllPosed("in the long run there are no failures to count: the chain ends up or down for good")
+            raise IllPosed("in the long run there are no failures to count: in the end it stays up, or down, for good")
         return frequency
 
     def _failure_frequency(self, question: Question) -> Enclosure:

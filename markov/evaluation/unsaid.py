@@ -48,7 +48,8 @@ def _of_the_system(model: Model, plan: Plan) -> Iterator[str]:
     ]
     if "while_down" not in model.model_fields_set and silent:
         yield "while_down: continue (units go on failing at their present rate while the system is down)"
-    if any(slot.repair is not None for layout in plan.islands for slot in layout.slots):
+    slots = [slot for layout in plan.islands for slot in layout.slots]
+    if any(slot.repair is not None and slot.failure is not None for slot in slots):
         yield "restoration: unit by unit (the system is restored by the repair of its units)"
         yield "repair_when: at once (repair begins at the fault, no deferral)"
     if "initial" not in model.model_fields_set:

@@ -82,16 +82,17 @@ def _margin(target: Target, value: float) -> str:
     limit = float(target.limit)
     if target.measure in {*_CERTAIN, "mean_capacity"} and 0.5 < limit < 1:
         ratio = (1 - value) / (1 - limit)
-        return f"{_ratio(ratio)} of the allowed shortfall from 1"
+        return f"{_ratio(ratio)} the allowed shortfall from 1"
     if limit == 0:
         return f"{value:.3g} away from the limit"
-    return f"{_ratio(value / limit)} of the limit"
+    return f"{_ratio(value / limit)} the limit"
 
 
 def _ratio(ratio: float) -> str:
-    if 0.005 <= ratio < 9.995:
-        return f"{100 * ratio:.3g} %"
-    return f"{ratio:.3g} times" if ratio >= 1 else f"{ratio:.1e}"
+    """Return a ratio as the beginning of a phrase: ``62.8 % of``, ``12 times``."""
+    if ratio < 1e-5:
+        return f"{ratio:.1e} times"
+    return f"{100 * ratio:.3g} % of" if ratio < 9.995 else f"{ratio:.3g} times"
 
 
 def _told(target: Target, result: Result, verdict: Verdict, satisfied: bool | None, why: str) -> TargetResult:

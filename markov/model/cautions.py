@@ -75,6 +75,9 @@ def _parameters(content: Content) -> Iterator[str]:
     for name in content.parameters:
         if name not in used:
             yield f"parameters.{name}: nothing uses this parameter."
+    bare = [name for name, parameter in content.parameters.items() if parameter.source is None and name in used]
+    if bare:
+        yield f"Unsupported, as no `source` is given: {choices(bare, 'and')}."
 
 
 def _rates(content: Content) -> Iterator[str]:

@@ -61,6 +61,8 @@ def _words(result: Result) -> str:
 
 
 def _value(result: Result) -> str:
+    if result.value is None:
+        return "—"
     return f"{value_words(result.measure, result.value)} {unit_words(result.unit)}".strip()
 
 

@@ -10,7 +10,7 @@ from markov.errors import DrawingError, UsageError
 
 def taken(target: Path) -> str:
     """Return what is said of a file that exists already."""
-    return f"{target} exists already; expected a new name, or leave to overwrite it"
+    return f"{target} exists already; expected a new name, or leave to replace it (--overwrite)"
 
 
 def store(content: bytes, target: Path, *, overwrite: bool = False) -> None:

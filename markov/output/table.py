@@ -105,6 +105,8 @@ def _heading(console: Console, text: str) -> None:
 
 def _target_table(targets: tuple[TargetResult, ...]) -> Table:
     table = _plain_table("", "target", "measure", "limit", "value", "verdict", "why")
+    for column in table.columns[4:6]:
+        column.no_wrap = True
     for target in targets:
         table.add_row(
             "",
@@ -119,13 +121,14 @@ def _target_table(targets: tuple[TargetResult, ...]) -> Table:
 
 
 def _result_table(results: tuple[Result, ...]) -> Table:
-    table = _plain_table("", "measure", "value", "bound")
+    table = _plain_table("", "measure", "value", "bound, relative")
     table.columns[2].justify = "right"
+    table.columns[2].no_wrap = True
     for result in results:
         table.add_row(
             "",
             Text(_measure_cell(result.measure, result.of, timing_words(result), result.state)),
-            Text(_value_cell(result) if result.reason is None else "—"),
+            Text(_value_cell(result)),
             Text(bound_words(result) if result.reason is None else result.reason),
         )
     return table
@@ -148,6 +151,8 @@ def _measure_cell(measure: str, of: str | None, timing: str, state: str | None =
 
 
 def _value_cell(result: Result) -> str:
+    if result.value is None:
+        return "—"
     unit = unit_words(result.unit)
     value = value_words(result.measure, result.value)
     return f"{value} {unit}".rstrip() if not unit.startswith("/") else f"{value}{unit}"

@@ -37,6 +37,8 @@ def read(path: str | os.PathLike[str]) -> Model:
         Where there is no such file, or it cannot be opened.
     """
     if os.fspath(path) == "-":
+        if sys.stdin is None:
+            raise UsageError("cannot read the spec -: there is no standard input")
         return read_bytes(sys.stdin.buffer.read(LARGEST + 1), STANDARD_INPUT)
     try:
         with Path(path).open("rb") as file:

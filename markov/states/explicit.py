@@ -92,8 +92,10 @@ def take(model: Model) -> ExplicitSpace:
         given = transition.rate if transition.rate is not None else transition.mean_time
         if given is None:
             raise AssertionError("a transition has a rate or a mean time")
-        symbol = _symbol(given, of_a_time=transition.rate is None)
-        factor = Factor(symbol, transition.hourly, "as written", f"transitions[{position}]")
+        of_a_time = transition.rate is None
+        symbol = _symbol(given, of_a_time=of_a_time)
+        where = f"transitions[{position}]"
+        factor = Factor(symbol, transition.hourly, "as written", where, quantity=given, is_reciprocal=of_a_time)
         rate = kinds.rates.intern(Rate(Fraction(1), (factor,)))
         cause = transition.cause or f"{transition.source} to {transition.target}"
         source.append(number[transition.source])

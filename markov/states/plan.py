@@ -280,7 +280,8 @@ def _failure(name: str, kind: Unit, where: str) -> Factor | None:
         return None
     given = kind.failure
     if given.dimension == "rate":
-        return Factor(given.name or f"λ({name})", given.exact, f"failure rate of {name}", f"{where}.failure_rate")
+        what = f"failure rate of {name}"
+        return Factor(given.name or f"λ({name})", given.exact, what, f"{where}.failure_rate", quantity=given)
     return _per(given, 1, f"λ({name})", f"failure rate of {name}", f"{where}.mean_time_to_failure")
 
 
@@ -302,7 +303,7 @@ def _repair(name: str, kind: Unit, where: str) -> Factor | None:
     if given is None:
         raise AssertionError("a repairable unit has a repair time or a repair rate")
     symbol = given.name if given.name and stages == 1 else f"μ({name})"
-    return Factor(symbol, given.exact * stages, what, f"{where}.repair_rate")
+    return Factor(symbol, given.exact * stages, what, f"{where}.repair_rate", quantity=given, stages=stages)
 
 
 def _delay(name: str, kind: Unit, where: str) -> Factor | None:
@@ -314,8 +315,16 @@ def _delay(name: str, kind: Unit, where: str) -> Factor | None:
 
 def _per(time: Quantity, stages: int, symbol: str, meaning: str, origin: str) -> Factor:
     """Return the rate of one of some stages of a mean time."""
-    return Factor(f"{stages}/{time.name}" if time.name else symbol, Fraction(stages) / time.exact, meaning, origin)
+    return Factor(
+        f"{stages}/{time.name}" if time.name else symbol,
+        Fraction(stages) / time.exact,
+        meaning,
+        origin,
+        quantity=time,
+        stages=stages,
+        is_reciprocal=True,
+    )
 
 
 def _share(share: Quantity, symbol: str, meaning: str, origin: str) -> Factor:
-    return Factor(share.name or symbol, share.exact, meaning, origin, is_share=True)
+    return Factor(share.name or symbol, share.exact, meaning, origin, is_share=True, quantity=share)

@@ -118,7 +118,6 @@ def test_a_unit_renewed_at_once_calls_no_crew(program: Program) -> None:
     assert told.status in (0, 2), told.err
 
 
-@pytest.mark.xfail(strict=True, reason="a failed unit that is never repaired counts as a crew at work: status 4")
 def test_a_unit_that_is_never_repaired_holds_no_crew(program: Program) -> None:
     def plant(repairs: str) -> str:
         return (

@@ -34,12 +34,12 @@ def test_a_pipe_gets_plain_text(program: Program) -> None:
 
 
 def test_a_terminal_gets_colours_unless_they_are_unwanted(program: Program, monkeypatch: pytest.MonkeyPatch) -> None:
+    path = program.file(LAMP)
     monkeypatch.setenv("TERM", "xterm-256color")
-    monkeypatch.setenv("FORCE_COLOR", "1")
-    coloured = program.table(LAMP).out
-    assert COLOUR.search(coloured)
+    monkeypatch.setattr(type(sys.stdout), "isatty", lambda self: self is sys.stdout)
+    assert COLOUR.search(program("solve", path).out)
     monkeypatch.setenv("NO_COLOR", "1")
-    assert not COLOUR.search(program.table(LAMP).out)
+    assert not COLOUR.search(program("solve", path).out)
 
 
 def test_verdicts_are_told_in_words_beside_the_colour(program: Program) -> None:
@@ -201,6 +201,24 @@ def test_a_full_disk_is_not_called_a_fault_of_the_program(program: Program, chec
     assert process.returncode not in (0, 1)
     assert "No space left" in err
     assert "fault of the program" not in err
+
+
+@pytest.mark.skipif(os.name != "posix", reason="streams are closed by a POSIX shell")
+@pytest.mark.parametrize("call", ["solve plant.yaml >&-", "solve - <&-"])
+def test_a_stream_that_is_closed_from_the_start_is_a_fault_of_the_call(
+    program: Program, checkout: Path, call: str
+) -> None:
+    program.file(MET)
+    done = subprocess.run(
+        ["sh", "-c", f'exec "$0" -m markov {call}', sys.executable],
+        cwd=program.folder,
+        env={**os.environ, "PYTHONPATH": os.fspath(checkout)},
+        capture_output=True,
+        text=True,
+        timeout=60,
+    )
+    assert done.returncode in (0, 2), done.stderr
+    assert "Traceback" not in done.stderr
 
 
 # --- interrupts

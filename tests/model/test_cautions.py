@@ -19,7 +19,7 @@ targets:
 
 
 def test_plain_plant_has_no_cautions(read):
-    assert read(PLANT).warnings == ()
+    assert read(PLANT).warnings == ("Unsupported, as no `source` is given: `failures`.",)
 
 
 @pytest.mark.parametrize(
@@ -61,4 +61,10 @@ def test_equal_units_are_not_called_nearly_alike(read):
 
 def test_parameter_behind_a_parameter_is_used(read):
     text = PLANT.replace("{failures: 1e-4 /h}", "{failures: base * 2, base: 5e-5 /h}")
+    assert read(text).warnings == ("Unsupported, as no `source` is given: `failures` and `base`.",)
+
+
+def test_a_parameter_with_a_source_is_supported(read):
+    text = PLANT.replace("failures: 1e-4 /h", "failures: {value: 1e-4 /h, source: a handbook}")
+    assert text != PLANT
     assert read(text).warnings == ()

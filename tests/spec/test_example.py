@@ -53,7 +53,7 @@ def test_lock_is_read_whole(read):
         ("LOCK-1", Fraction(4999, 5000)),
         ("LOCK-2", Fraction(1, 10)),
     ]
-    assert model.warnings == ()
+    assert model.warnings == ("Unsupported, as no `source` is given: `takeover_coverage`.",)
     assert model.sha256 == sha256(LOCK.encode()).hexdigest()
 
 

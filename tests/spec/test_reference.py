@@ -38,7 +38,8 @@ def test_specs_in_the_reference_are_read(page):
     examples = re.findall(r"```yaml\n(.*?)```", page, re.DOTALL)
     assert len(examples) == 2
     for example in examples:
-        assert spec.read_text(example).warnings in ((), _NO_MISSION)
+        noted = [text for text in spec.read_text(example).warnings if not text.startswith("Unsupported")]
+        assert tuple(noted) in ((), _NO_MISSION)
 
 
 _NO_MISSION = ("No `mission`: measures that need a time are given only for times that are asked.",)
