@@ -57,7 +57,8 @@ Examples:
     "--at", "times", multiple=True, metavar="TIME", help='Answer at this time too, such as "1 y"; repeatable.'
 )
 @click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
-def solve(spec: str, times: tuple[str, ...], as_json: bool) -> int:
+@click.option("--method", metavar="NAME", help="Force a method for values at a time, to check one against another.")
+def solve(spec: str, times: tuple[str, ...], as_json: bool, method: str | None) -> int:
     """Solve SPEC (a file, or - for standard input): measures, verdicts, unsaid choices."""
     from markov.evaluation import solve_model
     from markov.progress import progress_line
@@ -66,7 +67,7 @@ def solve(spec: str, times: tuple[str, ...], as_json: bool) -> int:
     model = read(spec)
     asked = [hours(time, model) for time in times]
     with progress_line() as tell:
-        solution = solve_model(model, asked, progress=tell)
+        solution = solve_model(model, asked, method=method, progress=tell)
     if as_json:
         from markov.output.as_json import solution_json
 

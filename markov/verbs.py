@@ -42,7 +42,9 @@ def read(source: str | Path) -> Model:
     return read_spec(source)
 
 
-def solve(spec: Model | str | Path, *, at: Iterable[str | float | Fraction] = ()) -> Solution:
+def solve(
+    spec: Model | str | Path, *, at: Iterable[str | float | Fraction] = (), method: str | None = None
+) -> Solution:
     """Solve a model and judge its targets.
 
     Parameters
@@ -51,6 +53,9 @@ def solve(spec: Model | str | Path, *, at: Iterable[str | float | Fraction] = ()
         A model, or the file of a spec.
     at : iterable of str, float or Fraction
         Times beside the mission time: text with a unit of measure (``"1 y"``), or numbers of hours.
+    method : str, optional
+        Method for values at a time, such as ``"uniformisation"``, to check one against another; chosen by size and time
+        if left out.
 
     Returns
     -------
@@ -67,7 +72,7 @@ def solve(spec: Model | str | Path, *, at: Iterable[str | float | Fraction] = ()
     from markov.evaluation import solve_model
 
     model = _model(spec)
-    solved = solve_model(model, [hours(time, model) for time in at])
+    solved = solve_model(model, [hours(time, model) for time in at], method=method)
     return Solution(**{each.name: getattr(solved, each.name) for each in fields(solved)})
 
 

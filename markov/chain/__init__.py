@@ -26,12 +26,13 @@ from markov.chain.solve import (
     time_spent,
 )
 from markov.chain.survival import survival
-from markov.chain.transient import Transient, transient
+from markov.chain.transient import Method, Transient, transient
 
 __all__ = [
     "Enclosure",
     "FirstPassage",
     "Generator",
+    "Method",
     "Transient",
     "Vector",
     "absorption",

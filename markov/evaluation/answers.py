@@ -17,6 +17,7 @@ from markov.chain import (
     Enclosure,
     FirstPassage,
     Generator,
+    Method,
     Transient,
     Vector,
     aggregate,
@@ -55,10 +56,19 @@ class Answers:
     year_hours : Fraction
     times : sequence of Fraction
         Times in hours at which values will be asked for; they are worked out together.
+    method : str, optional
+        Method for values at a time; chosen by size and time if left out.
     """
 
-    def __init__(self, space: StateSpace, year_hours: Fraction, times: Sequence[Fraction] = ()) -> None:
+    def __init__(
+        self,
+        space: StateSpace,
+        year_hours: Fraction,
+        times: Sequence[Fraction] = (),
+        method: Method | None = None,
+    ) -> None:
         self.space = space
+        self._method = method
         self.year_hours = year_hours
         self._times = tuple(sorted(set(times)))
         self._stopped: dict[str | None, Transient] = {}
@@ -177,12 +187,14 @@ class Answers:
         rewards: list[Vector | Mask | Values] = []
         for of in self._subjects:
             rewards += [(~self.up(of)).astype(np.float64), self._failure_flow(of), self.up(of).astype(np.float64)]
-        return transient(self.generator, self.start, self._times, rewards)
+        return transient(self.generator, self.start, self._times, rewards, method=self._method)
 
     def _stopped_at_failure(self, of: str | None) -> Transient:
         """The chain stopped at the first failure of a subject."""
         if of not in self._stopped:
-            self._stopped[of] = transient(self.generator, self.start, self._times, absorbing=~self.up(of))
+            self._stopped[of] = transient(
+                self.generator, self.start, self._times, absorbing=~self.up(of), method=self._method
+            )
         return self._stopped[of]
 
     def _states_at(self, at: Fraction) -> Vector:

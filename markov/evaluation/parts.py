@@ -12,7 +12,7 @@ from fractions import Fraction
 
 import numpy as np
 
-from markov.chain import Enclosure, point
+from markov.chain import Enclosure, Method, point
 from markov.errors import IllPosed
 from markov.evaluation.answers import Answers
 from markov.evaluation.combining import Share, Thirds, combine, critical, exposed
@@ -40,15 +40,19 @@ class Parts:
         Times in hours at which values will be asked for.
     limit : int
         Largest number of states of one part.
+    method : str, optional
+        Method for values at a time.
     """
 
-    def __init__(self, model: Model, modules: Modules, times: Sequence[Fraction], limit: int) -> None:
+    def __init__(
+        self, model: Model, modules: Modules, times: Sequence[Fraction], limit: int, method: Method | None = None
+    ) -> None:
         self.model = model
         self.structure = modules.structure
         self.answers: list[Answers] = []
         for inside in modules.inside:
             part = model.model_copy(update={"system": inside, "targets": ()})
-            self.answers.append(Answers(generate(part, limit=limit), model.year_hours, times))
+            self.answers.append(Answers(generate(part, limit=limit), model.year_hours, times, method))
 
     @property
     def spaces(self) -> tuple[GeneratedSpace, ...]:

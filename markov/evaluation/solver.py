@@ -5,9 +5,10 @@ from __future__ import annotations
 from collections.abc import Sequence
 from fractions import Fraction
 from functools import cached_property
+from typing import get_args
 
-from markov.chain import Enclosure
-from markov.errors import IllPosed, TooLarge
+from markov.chain import Enclosure, Method
+from markov.errors import IllPosed, TooLarge, UsageError
 from markov.evaluation.answers import Answers
 from markov.evaluation.modules import find_modules
 from markov.evaluation.parts import NeedsWhole, Parts
@@ -31,6 +32,23 @@ from markov.states.generation import STATE_LIMIT
 WHOLE_UP_TO = 20_000
 
 
+def known_method(name: str | None) -> Method | None:
+    """Return a method for values at a time by its name.
+
+    Raises
+    ------
+    UsageError
+        There is no method of that name.
+    """
+    for method in get_args(Method):
+        if method == name:
+            known: Method = method
+            return known
+    if name is not None:
+        raise UsageError(f"method {name!r}; expected one of {', '.join(get_args(Method))}")
+    return None
+
+
 class Solver:
     """Answers the questions of one model, from as small a chain as each question allows.
 
@@ -43,6 +61,8 @@ class Solver:
         Largest number of states of any chain.
     whole_up_to : int
         Size up to which the whole chain is preferred.
+    method : str, optional
+        Method for values at a time; chosen by size and time if left out.
 
     Raises
     ------
@@ -57,8 +77,10 @@ class Solver:
         *,
         limit: int = STATE_LIMIT,
         whole_up_to: int = WHOLE_UP_TO,
+        method: str | None = None,
     ) -> None:
         self.model = model
+        self._method = known_method(method)
         self._times = tuple(times)
         self._limit = limit
         self._expected: list[Question] = []
@@ -68,7 +90,7 @@ class Solver:
             self._prepared = prepare(model, subjects_of(model))
             modules = find_modules(model, self._prepared.plan) if self.most_states > whole_up_to else None
             if modules is not None:
-                self.parts = Parts(model, modules, self._times, limit)
+                self.parts = Parts(model, modules, self._times, limit, self._method)
         if self.parts is None:
             self.whole  # noqa: B018  (a chain that is too large is refused at once)
 
@@ -87,7 +109,7 @@ class Solver:
         """Answers from the chain of the whole plant."""
         space: StateSpace
         space = take(self.model) if self._prepared is None else generate_prepared(self._prepared, limit=self._limit)
-        answers = Answers(space, self.model.year_hours, self._times)
+        answers = Answers(space, self.model.year_hours, self._times, self._method)
         for question in self._expected:
             answers.expect(question)
         return answers

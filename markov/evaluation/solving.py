@@ -41,6 +41,7 @@ def solve_model(
     times: Sequence[Fraction] = (),
     *,
     limit: int = STATE_LIMIT,
+    method: str | None = None,
     progress: Progress = lambda _: None,
 ) -> Solution:
     """Solve a model.
@@ -52,13 +53,15 @@ def solve_model(
         Times in hours to answer measures at, beside the mission time; targets keep their own.
     limit : int
         Largest number of states.
+    method : str, optional
+        Method for values at a time; chosen by size and time if left out.
     progress : callable
         Told what is being done.
     """
     progress("generating the chain")
     questions = all_questions(model, times)
     points = [question.at_hours for question in questions if question.at_hours is not None]
-    solver = Solver(model, points, limit=limit)
+    solver = Solver(model, points, limit=limit, method=method)
     for question in questions:
         solver.expect(question)
     results: dict[Question, Result] = {}

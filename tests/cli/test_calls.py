@@ -125,3 +125,19 @@ def test_without_any_time_a_target_in_time_is_undecided_or_refused_but_never_met
     told = program.solve(spec)
     assert told.status in (2, 3)
     assert told.status == 2 or told.verdicts == {"T": "undecided"}
+
+
+def test_methods_forced_one_after_another_agree(program: Program) -> None:
+    path = program.file(LAMP)
+    found = [
+        program("solve", path, "--json", "--method", method).result("unreliability")["value"]
+        for method in ("ladder", "uniformisation", "squaring")
+    ]
+    assert found == pytest.approx([found[0]] * 3, rel=1e-12)
+
+
+def test_an_unknown_method_is_told_the_known_ones(program: Program) -> None:
+    told = program("solve", program.file(LAMP), "--method", "guessing")
+    assert told.status == 2
+    assert told.out == ""
+    assert "expected one of ladder, uniformisation" in told.err
