@@ -88,12 +88,15 @@ class Answers:
     def arrow_rates(self) -> tuple[Values, Values]:
         """Rate of every transition, multiples included, as sums of two floats, shape (a,) each."""
         arrows, kinds = self.space.arrows, self.space.kinds
-        rate = np.array([kind.rate for kind in kinds.kinds], np.int64)[arrows.kind] if len(arrows) else arrows.kind
         widest = int(arrows.multiple.max(initial=0)) + 1
-        pairs, where = np.unique(rate.astype(np.int64) * widest + arrows.multiple, return_inverse=True)
-        exact = [kinds.rates.rates[pair // widest].exact * (pair % widest) for pair in pairs.tolist()]
+        rate_of_kind = np.array([kind.rate for kind in kinds.kinds] or [0], np.int64)
+        pair = rate_of_kind[arrows.kind] * widest + arrows.multiple
+        found = np.flatnonzero(np.bincount(pair, minlength=1))  # few pairs, so no sorting of many transitions
+        exact = [kinds.rates.rates[each // widest].exact * (each % widest) for each in found.tolist()]
+        place = np.zeros(int(found.max(initial=0)) + 1, np.int64)
+        place[found] = np.arange(len(found))
         high, low = split_exact(exact)
-        return high[where], low[where]
+        return high[place[pair]], low[place[pair]]
 
     @cached_property
     def start(self) -> int | Vector:
