@@ -5,7 +5,7 @@ The public door: names only.  Everything else is private and may change.
 >>> import markov
 >>> solution = markov.solve("specs/harbour_lock.yaml")
 >>> solution.result("steady_state_availability").value
-0.9998744850268987
+0.9998744850268986
 """
 
 from __future__ import annotations

@@ -65,7 +65,7 @@ def independent_blocks(model: Model, at: Fraction | None) -> Enclosure:
     parts: dict[str, Share] = {}
     for name in model.named_in_system:
         alone = model.model_copy(update={"system": Named(name), "targets": ()})
-        space = generate(alone)
+        space = generate(alone, alone=name)
         answers = Answers(space, model.year_hours, () if at is None else (at,))
         up = "steady_state_availability" if at is None else "reliability"
         parts[name] = Share(answers.answer(Question(up, at_hours=at)), answers.answer(_badness(at)))

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 
 from markov.model import Crew, Group, Model, names
 from markov.states import Plan
+from markov.states.layout import node_of
 
 
 def unsaid_choices(model: Model, plan: Plan | None) -> tuple[str, ...]:
@@ -19,9 +20,9 @@ def unsaid_choices(model: Model, plan: Plan | None) -> tuple[str, ...]:
     """
     found = list(_of_the_whole(model))
     if plan is not None:
-        islands = [layout.node.name for layout in plan.islands]
+        groups = [node_of(path[-1]).name for layout in plan.islands for path in layout.groups]
         found += _of_the_system(model, plan)
-        for name in islands:
+        for name in groups:
             if name in model.groups:
                 found += _of_a_group(name, model.groups[name], model)
         for unit in dict.fromkeys(slot.unit for layout in plan.islands for slot in layout.slots):
@@ -51,7 +52,9 @@ def _of_the_system(model: Model, plan: Plan) -> Iterator[str]:
     slots = [slot for layout in plan.islands for slot in layout.slots]
     if any(slot.repair is not None and slot.failure is not None for slot in slots):
         yield "restoration: unit by unit (the system is restored by the repair of its units)"
-        yield "repair_when: at once (repair begins at the fault, no deferral)"
+        found = [group for name, group in model.groups.items() if plan.holds(name)]
+        if not found or not all(group.is_said("repair_when") for group in found):
+            yield "repair_when: at once (repair begins at the fault, no deferral)"
     if "initial" not in model.model_fields_set:
         yield "initial: all good (every unit good at time zero, duty filled by rank)"
     if any(slot.count > 1 for layout in plan.islands for slot in layout.slots) or len(plan.islands) > 1:
@@ -81,6 +84,9 @@ def _of_a_group(name: str, group: Group, model: Model) -> Iterator[str]:
         yield f"{where}.switchover.uncovered: until_repair (an uncovered fault ends with the next repair that suffices)"
     if standby and group.takeover_time is None:
         yield f"{where}.switchover.time: 0 h (a standby takes over at once)"
+    timed = group.takeover_time is not None and not group.takeover_time.is_zero
+    if timed and group.switchover is not None and not group.switchover.is_said("stages"):
+        yield f"{where}.switchover.stages: 1 (switchover times are exponential)"
     if standby and len(group.members) > 1 and "return_to_preferred" not in group.model_fields_set:
         yield f"{where}.return_to_preferred: false (the running unit stays on duty after a repair)"
     can_refuse = any(
@@ -88,7 +94,6 @@ def _of_a_group(name: str, group: Group, model: Model) -> Iterator[str]:
         for member in group.members
         if member.name in model.units
     )
-    timed = group.takeover_time is not None and not group.takeover_time.is_zero
     if standby and (can_refuse or timed) and "after_repair" not in group.model_fields_set:
         yield f"{where}.after_repair: straight_to_duty (a repair ends with a functional check, so no start attempt)"
 

@@ -135,7 +135,7 @@ def _remark(diagram: StateDiagram, boxes: int, band: int, inside: int, between: 
         f"{boxes} boxes, one per {columns} and condition. {_count(inside, 'arrow')} inside boxes are not drawn; "
         f"the other {len(diagram.arrows) - inside} are gathered into {between}. “By state”, and “60 arrows, 15 sums”: "
         "the rate differs between the states inside the box, in so many sums of formulas. "
-        "The transition table lists every arrow."
+        "The same diagram as a .dot file lists every arrow."
     )
 
 

@@ -11,6 +11,7 @@ from markov._version import __version__
 from markov.errors import TooLarge
 from markov.model import Model
 from markov.output.diagram import ArrowKind, Condition, DiagramArrow, DiagramNode, LegendEntry, StateDiagram
+from markov.output.drawing import STATE_LIMIT
 from markov.rates import Factor
 from markov.states import GeneratedSpace, StateSpace
 
@@ -37,6 +38,7 @@ def state_diagram(model: Model, space: StateSpace, *, values: bool = False) -> S
     TooLarge
         More than `DRAWING_LIMIT` states.
     """
+    values = values and space.size <= STATE_LIMIT  # a folded arrow sums many, and a sum of equations is none
     if space.size > DRAWING_LIMIT:
         raise TooLarge(f"{space.size:,} states are too many to draw; at most {DRAWING_LIMIT:,}, folded by level")
     levels = _levels(space)

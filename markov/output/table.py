@@ -60,7 +60,7 @@ def print_solution(solution: Solution, console: Console) -> None:
     console.print(_result_table(tuple(result for result in solution.results if _matters(result))))
     console.print(
         Padding(
-            "The last column is the proven bound relative to the value: the exact answer of the model lies within it.",
+            "The last column is proven: the exact answer of the model is no farther from the value, relative to it.",
             (0, 0, 0, 2),
         ),
         style="dim",
@@ -111,7 +111,7 @@ def _target_table(targets: tuple[TargetResult, ...]) -> Table:
         table.add_row(
             "",
             Text(target.id),
-            Text(_measure_cell(target.measure, target.of, timing_words(target.result))),
+            Text(_measure_cell(target.measure, target.of, timing_words(target.result), target.result.state)),
             Text(f"{target.direction.replace('_', ' ')} {target.limit_text}"),
             Text(_value_cell(target.result)),
             Text(target.verdict.replace("_", " "), style=_VERDICT_STYLE[target.verdict]),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from fractions import Fraction
+from math import ceil
 
 from markov.measures import MEASURES
 from markov.results import Result
@@ -48,10 +49,14 @@ def hours_words(hours: Fraction | None) -> str:
 
 def size_words(states: int, transitions: int, raw_states: int, parts: int = 1) -> str:
     """Return the size of what is solved, with the size before alike groups were merged and parts taken apart."""
-    told = f"{states:,} states, {transitions:,} transitions"
+    told = f"{_counted(states, 'state')}, {_counted(transitions, 'transition')}"
     if parts > 1:
         return f"{told} in {parts} independent parts (of {_large(raw_states)} states together)"
     return f"{told} (alike groups merged, from {_large(raw_states)} states)" if raw_states != states else told
+
+
+def _counted(number: int, word: str) -> str:
+    return f"{number:,} {word}" if number == 1 else f"{number:,} {word}s"
 
 
 def _large(number: int) -> str:
@@ -75,15 +80,22 @@ def _exponent(value: float) -> int:
 
 
 def bound_words(result: Result) -> str:
-    """Return how far the value is proven: the half width of its bound over the value."""
+    """Return how far the exact answer can be from the value at most, relative to it, rounded up."""
     if result.value is None:
         return ""
     if result.lower is None or result.upper is None:
         return "estimate, no bound"
     if result.lower == result.upper:
         return "exact"
-    width = result.relative_width
-    return f"± {result.upper - result.lower:.0e}" if width is None else f"± {width / 2:.0e}"
+    side = max(result.upper - result.value, result.value - result.lower)
+    return f"± {_rounded_up(side / abs(result.value) if result.value else side)}"
+
+
+def _rounded_up(value: float) -> str:
+    """Return a positive number with one digit, never below it."""
+    mantissa, exponent = f"{value:.17e}".split("e")
+    digit = ceil(float(mantissa))
+    return f"{digit}e{exponent}" if digit < 10 else f"1e{int(exponent) + 1:+03d}"
 
 
 def timing_words(result: Result) -> str:

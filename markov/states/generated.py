@@ -319,9 +319,9 @@ class Prepared:
         return round(self.most_states * each)
 
 
-def prepare(model: Model, subjects: tuple[str, ...] = (), *, merge: bool = True) -> Prepared:
+def prepare(model: Model, subjects: tuple[str, ...] = (), *, merge: bool = True, alone: str | None = None) -> Prepared:
     """Work out the islands of a model; see `generate` for the parameters."""
-    drawn = plan(model, subjects)
+    drawn = plan(model, subjects, alone=alone)
     kinds = ArrowKinds()
     contended = {unit.unit for pool in drawn.pools for unit in pool.kinds}
     starts = tuple(initial_digits(layout, _initially_failed(model, layout)) for layout in drawn.islands)
@@ -338,7 +338,12 @@ def prepare(model: Model, subjects: tuple[str, ...] = (), *, merge: bool = True)
 
 
 def generate(
-    model: Model, subjects: tuple[str, ...] = (), *, limit: int = STATE_LIMIT, merge: bool = True
+    model: Model,
+    subjects: tuple[str, ...] = (),
+    *,
+    limit: int = STATE_LIMIT,
+    merge: bool = True,
+    alone: str | None = None,
 ) -> GeneratedSpace:
     """Generate the chain of a model with units and groups.
 
@@ -351,13 +356,15 @@ def generate(
         Largest number of states.
     merge : bool
         Whether interchangeable groups are merged; false keeps every group apart, for checks and comparisons.
+    alone : str, optional
+        The only group or unit to take, as if it had every crew to itself.
 
     Raises
     ------
     TooLarge
         The chain has more states than `limit`, or cannot be numbered.
     """
-    return generate_prepared(prepare(model, subjects, merge=merge), limit=limit)
+    return generate_prepared(prepare(model, subjects, merge=merge, alone=alone), limit=limit)
 
 
 def generate_prepared(prepared: Prepared, *, limit: int = STATE_LIMIT) -> GeneratedSpace:

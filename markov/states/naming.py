@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Sequence
 
 from markov.states.layout import Layout, Path, Slot, Train, node_of
@@ -23,7 +24,12 @@ def island_label(layout: Layout, column: Sequence[int], ordinary: Sequence[int],
     """
     if list(column) == list(ordinary) and (layout.node.active or not alone):
         return ""
-    parts = [text for path, slot in layout.paths if (text := _slot_label(path, slot, column))]
+    counts = Counter(slot.unit for slot in layout.slots)
+    parts = []
+    for path, slot in layout.paths:
+        text = _slot_label(path, slot, column)
+        if text:
+            parts.append(f"{slot.unit if counts[slot.unit] == 1 else slot.name}: {text}")
     for path in layout.groups:
         parts += _group_words(path, column, several=len(layout.groups) > 1)
     return ", ".join(parts)
@@ -67,7 +73,7 @@ def _slot_label(path: Path, slot: Slot, column: Sequence[int]) -> str:
     found += _staged(slot.held, column, "interrupted")
     found += _staged(slot.serve, column, "in repair")
     told = [f"{number} {what}" if slot.count > 1 else what for number, what in found if number]
-    return f"{slot.unit}: {' + '.join(told)}" if told else ""
+    return " + ".join(told)
 
 
 def _staged(rows: tuple[int, ...], column: Sequence[int], what: str) -> list[tuple[int, str]]:

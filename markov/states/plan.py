@@ -12,7 +12,7 @@ from fractions import Fraction
 from markov.model import Group, Model, Unit, names
 from markov.quantities import Quantity
 from markov.rates import Factor
-from markov.states.layout import Entry, Layout, Node, RowCounter, Slot, Train
+from markov.states.layout import Entry, Layout, Node, RowCounter, Slot, Train, node_of
 from markov.states.outage import TIMED_OUTCOMES
 
 
@@ -50,6 +50,10 @@ class Plan:
                 return number
         return None
 
+    def holds(self, group: str) -> bool:
+        """Tell whether a group, or a train, is in the chain."""
+        return any(node_of(path[-1]).name == group for layout in self.islands for path in layout.groups)
+
     def places_of(self, unit: str) -> tuple[tuple[int, int], ...]:
         """Return every (island, slot number) that holds items of a kind."""
         return tuple(
@@ -60,7 +64,7 @@ class Plan:
         )
 
 
-def plan(model: Model, subjects: tuple[str, ...] = ()) -> Plan:
+def plan(model: Model, subjects: tuple[str, ...] = (), *, alone: str | None = None) -> Plan:
     """Decide which islands enter the chain and draw up their rows.
 
     Parameters
@@ -69,8 +73,10 @@ def plan(model: Model, subjects: tuple[str, ...] = ()) -> Plan:
         A model with units and groups (not a hand-written chain).
     subjects : tuple of str
         Groups and units outside the system that a question asks about; they enter the chain too.
+    alone : str, optional
+        The only island to take, as if it had every crew to itself.
     """
-    islands = _islands_in_chain(model, subjects)
+    islands = _islands_in_chain(model, subjects) if alone is None else [alone]
     contended = _contended_pools(model, islands)
     layouts = tuple(_layout(model, name, contended) for name in islands)
     bare = Plan(model, layouts, (), ())

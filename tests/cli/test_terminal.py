@@ -71,12 +71,12 @@ def test_a_narrow_terminal_loses_no_word_and_breaks_no_number(
 def _lasting(monkeypatch: pytest.MonkeyPatch) -> None:
     """Let the solution wait until something was said on standard error."""
 
-    def solve(model: object, times: object, *, progress: object) -> object:
+    def solve(model: object, times: object, *, progress: object, **rest: object) -> object:
         progress("weighing the lamps")
         until = time.monotonic() + 20
         while "weighing the lamps" not in sys.stderr.getvalue() and time.monotonic() < until:
             time.sleep(0.005)
-        return solve_model(model, times, progress=progress)
+        return solve_model(model, times, progress=progress, **rest)
 
     monkeypatch.setattr("markov.evaluation.solve_model", solve)
 

@@ -1,5 +1,6 @@
 """What redundancy gains, against arrangements solved by themselves."""
 
+import numpy as np
 import pytest
 
 import markov
@@ -42,7 +43,30 @@ def test_a_shared_crew_makes_the_independent_answer_too_good() -> None:
     shared = solved(1, 1, SHARED, "any_of").result("gain_over_independent_blocks").value
     own = solved(1, 1, OWN, "any_of").result("gain_over_independent_blocks").value
     assert own == pytest.approx(1, rel=1e-12)
-    assert shared < 0.8
+    # By hand: with crews of their own (λ/(λ + μ))², with one crew, the pump first: a chain of four states.
+    a, b, m, n = 1e-3, 2e-3, 0.05, 0.1  # pump, fan: failure and repair
+    both = _both_down(a, b, m, n)
+    assert shared == pytest.approx(a / (a + m) * b / (b + n) / both, rel=1e-12)
+
+
+def _both_down(a: float, b: float, m: float, n: float) -> float:
+    """Long-run chance that both are down where the pump is repaired first: states none, pump, fan, both."""
+    generator = np.array([[-a - b, a, b, 0], [m, -m - b, 0, b], [n, 0, -n - a, a], [0, 0, m, -m]])
+    return float(np.linalg.solve(np.vstack([generator.T[:3], np.ones(4)]), [0, 0, 0, 1])[3])
+
+
+def test_a_third_group_does_not_load_the_crews_of_independent_blocks() -> None:
+    text = """
+units: {p: {failure_rate: 1 per 50 h, repair_time: 12 h}}
+groups: {a: {members: [p]}, b: {members: [p]}}
+crews: {c: {size: 1, repairs: [p]}}
+system: {any_of: [a, b]}
+"""
+    solution = markov.solve(read_text(text, "spec"))
+    alone = (12 / 62) ** 2
+    found = alone / solution.result("steady_state_unavailability").value
+    assert solution.result("gain_over_independent_blocks").value == pytest.approx(found, rel=1e-13)
+    assert found == pytest.approx(0.518730, abs=1e-6)
 
 
 def test_a_plain_plant_gains_nothing() -> None:

@@ -80,3 +80,18 @@ def test_a_hand_written_chain_leaves_only_the_year_unsaid() -> None:
         "states: {up: {up: true, initial: true}, down: {up: false}}\ntransitions: [{from: up, to: down, rate: 1 /h}]\n"
     )
     assert [each.split(":")[0] for each in markov.check(read_text(text, "spec")).assumptions] == ["year"]
+
+
+def test_choices_inside_a_train_are_listed_too() -> None:
+    text = """
+units: {a: {failure_rate: 1e-3 /h, repair_time: 1 h}}
+groups:
+  out: {members: [one, other], redundancy: cold_standby, switchover: {time: 2 h}, repair_when: at_once}
+  one: {members: [{unit: a, count: 2}], redundancy: active, repair_when: at_once}
+  other: {members: [{unit: a, count: 2}], redundancy: active, repair_when: at_once}
+system: out
+"""
+    found = dict(each.split(": ", 1) for each in markov.check(read_text(text, "spec")).assumptions)
+    assert found["groups.one.coverage"].startswith("1 ")
+    assert found["groups.out.switchover.stages"].startswith("1 ")
+    assert "repair_when" not in found

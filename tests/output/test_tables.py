@@ -89,7 +89,10 @@ def result(value: float | None, lower: float | None, upper: float | None) -> Res
 
 
 def test_bounds_are_told_relative_to_the_value_and_estimates_as_such() -> None:
-    assert bound_words(result(0.5, 0.499999, 0.500001)) == "± 2e-06"
+    assert bound_words(result(0.5, 0.499999, 0.500001)) == "± 3e-06"  # 2.0000000000575e-06, rounded up
+    assert bound_words(result(0.5, 0.5, 0.50000075)) == "± 2e-06"  # the farther side
+    assert bound_words(result(1.0, 0.999, 1.00000099)) == "± 2e-03"
+    assert bound_words(result(0.0, 0.0, 9.5e-300)) == "± 1e-299"
     assert bound_words(result(0.5, None, None)) == "estimate, no bound"
     assert bound_words(result(1.0, 1.0, 1.0)) == "exact"
 

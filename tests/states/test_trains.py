@@ -142,3 +142,18 @@ system: plant
         "pump: 1 failed, spare: on duty",
         "pump: 1 failed, spare: failed",
     ]
+
+
+def test_states_of_one_kind_in_several_groups_have_names_of_their_own() -> None:
+    text = """
+units: {a: {failure_rate: 1e-3 /h, repair_time: 1 h}}
+groups:
+  out: {members: [in, {unit: a, count: 2}], redundancy: active}
+  in: {members: [{unit: a, count: 2}], redundancy: active}
+system: out
+"""
+    space = generate(read_text(text, "spec"))
+    labels = [space.label(state) for state in range(space.size)]
+    assert len(set(labels)) == space.size
+    assert "in.a: 1 failed, in: on duty" in labels
+    assert "out.a: 1 failed, in: on duty" in labels
