@@ -5,18 +5,19 @@ With an expected number ``L t`` of jumps up to `FEW_JUMPS` the start weights are
 
     p(t) = sum_k Pr(k jumps) p P**k,      integral of p r over [0, t] = (1/L) sum_k Pr(more than k jumps) p P**k r.
 
-Beyond it a rung of half an expected jump is formed by the series to degree 15, its matrix powers shared between blocks of
-the polynomial, and squared; a time is climbed by the binary digits of the rungs that it holds, each applied to the row of
-weights, so that all times of a question share the squarings.  The uppermost rungs are replaced by repeated application.
+Beyond it the longest time is halved until at most half a jump is expected; the moves over this first rung are formed
+by the series to degree 16, matrix powers shared between blocks of the polynomial, and squared rung by rung.  A
+shorter time is climbed by the binary digits of the rungs that it holds, each applied to the row of weights, so that
+all times of a question share the squarings.
 
-All terms are non-negative.  Squarings in floats let the mass of a row drift, which spoils small probabilities; so after
-the series and after every squaring, where the off-diagonal sum of a row is under one half the diagonal is taken as one
-minus it, then the row is divided by its sum.  Truncating the series at degree 15 is a relative change of the rates below
-1e-17, as every rung is applied at least `FEW_JUMPS` times over.
+All terms are non-negative.  Squarings in floats let the mass of a row drift, which spoils small probabilities; so
+after the series and after every third squaring, where the off-diagonal sum of a row is under one half the diagonal is
+taken as one minus it, then the row is divided by its sum.  Truncating the series at degree 16 is a relative change of
+the rates below 1e-17, as the first rung is contained in the longest time at least ``2 FEW_JUMPS`` times.
 
 Accuracy: observed within 1e-13 relatively, entry by entry, against ball arithmetic and against the bounded methods of
-`markov.chain.transient`, for probabilities down to 1e-40 and up to 1e9 expected jumps; no bound is proven for floats, so
-what is reported as a result of a model comes from there.
+`markov.chain.transient`, for probabilities down to 1e-40 and up to 1e9 expected jumps; no bound is proven for floats,
+so what is reported as a result of a model comes from there.
 
 Sources: after J. Xue, Q. Ye, Computing exponentials of essentially non-negative matrices entrywise to high relative
 accuracy, Math. Comp. 82 (2013); blocks of powers: M. S. Paterson, L. J. Stockmeyer, SIAM J. Comput. 2 (1973).
@@ -42,9 +43,10 @@ FEW_JUMPS = 64
 #: Matrices beyond this size are better solved one by one.
 LARGEST_BATCH = 600
 
+_Poisson = tuple[list[float], list[float]]  # chances of exactly k jumps, of more than k
+
 _SHARED = 4  # powers shared by the blocks of the polynomial, as many blocks
 _DEGREE = _SHARED * _SHARED
-_FAR = 40  # terms of a series beyond the likely ones: states that take many rare jumps to reach need them
 _SPARED = 1  # uppermost rungs that are replaced by repeated application
 _UNHELD = 3  # squarings between two corrections of the rows
 _BLOCK = 1 << 17  # floats of one stack of matrices: what the cache of a core holds
@@ -208,19 +210,22 @@ class _Run:
             moves, other = other, moves
             yield _held(moves) if number % _UNHELD == 0 or number == self.count - 1 else moves
 
-    def _cut(self, expected: Fraction) -> tuple[Fraction, list[int]]:
-        """Return what is left for the series, and how often each rung is applied."""
+    def _cut(self, expected: Fraction) -> tuple[_Poisson, list[int]]:
+        """Return the chances of the series, and how often each rung is applied.
+
+        Without rungs the series takes as many more terms as there are states: some take many rare jumps to reach.
+        """
         if expected <= FEW_JUMPS:
-            return expected, [0] * self.count
+            return _poisson(expected, _DEGREE + self.jumps.shape[1]), [0] * self.count
         whole = math.floor(expected / self.rung)
         times = [whole >> number & 1 for number in range(self.count - 1)]
-        return expected - whole * self.rung, [*times, whole >> self.count - 1]
+        return _poisson(expected - whole * self.rung, _DEGREE), [*times, whole >> self.count - 1]
 
     def forward(self, row: Floats, columns: Floats) -> list[tuple[Floats, Floats]]:
         """Return at each time the weights (c, 1, n) with the integrals (c, 1, r)."""
         cuts = [self._cut(expected) for expected in self.expected]
         earns = columns.shape[2] > 0
-        found = [self._series(rest, row, columns) for rest, _ in cuts]
+        found = [self._series(chances, row, columns) for chances, _ in cuts]
         gains = self._first_gains(columns) if earns and self.count else columns
         for number, moves in enumerate(self._rungs()):
             for at, (_, applied) in enumerate(cuts):
@@ -231,8 +236,8 @@ class _Run:
                 gains = gains + moves @ gains
         return [(weights, gained * self.scale) for weights, gained in found]
 
-    def _series(self, rest: Fraction, row: Floats, columns: Floats) -> tuple[Floats, Floats]:
-        exactly, beyond = _poisson(rest)
+    def _series(self, chances: _Poisson, row: Floats, columns: Floats) -> tuple[Floats, Floats]:
+        exactly, beyond = chances
         step, weights, gained = row, exactly[0] * row, beyond[0] * (row @ columns)
         for chance, more in zip(exactly[1:], beyond[1:], strict=True):
             step = step @ self.jumps
@@ -243,7 +248,7 @@ class _Run:
 
     def _first_gains(self, columns: Floats) -> Floats:
         """Return the rewards of the first rung by state, over the time of one expected jump."""
-        _, beyond = _poisson(self.rung)
+        _, beyond = _poisson(self.rung, _DEGREE)
         seen, gains = columns, beyond[0] * columns
         for more in beyond[1:]:
             seen = self.jumps @ seen
@@ -252,8 +257,7 @@ class _Run:
 
     def backward(self, values: Floats) -> Floats:
         """Return the values (c, n, 1) as they are foreseen before the one time of this run."""
-        rest, applied = self._cut(self.expected[0])
-        exactly, _ = _poisson(rest)
+        (exactly, _), applied = self._cut(self.expected[0])
         step, found = values, exactly[0] * values
         for chance in exactly[1:]:
             step = self.jumps @ step
@@ -308,15 +312,15 @@ def _held(moves: Floats) -> Floats:
     return moves
 
 
-def _poisson(expected: Fraction) -> tuple[list[float], list[float]]:
+def _poisson(expected: Fraction, far: int) -> _Poisson:
     """Return the chances of exactly k and of more than k jumps, k = 0, 1, ...; each rounded once or twice.
 
-    The sum that is left out is below 1e-17 of any value that can be reached within the terms taken.
+    As many terms are taken as are likely, and `far` more.
     """
     if expected == 0:
         return [1.0], [0.0]
     mean = float(expected)
-    terms = _DEGREE + 5 if expected <= 1 else math.ceil(mean + 12.0 * math.sqrt(mean)) + _FAR
+    terms = (5 if expected <= 1 else math.ceil(mean + 12.0 * math.sqrt(mean))) + far
     none = math.exp(-mean) * (1.0 - float(expected - Fraction(mean)))
     ratios, ratio = [Fraction(1)], Fraction(1)
     for k in range(1, 2 * terms):

@@ -1,14 +1,14 @@
 """Values of parameters in many samples, with every rate of a chain that follows from them.
 
-A quantity that no sampled parameter enters stays the exact fraction that it is.  The others are evaluated in floats, all
-samples at once, along the tree of their expression.
+A quantity that no sampled parameter enters stays the exact fraction that it is.  The others are evaluated in floats,
+all samples at once, along the tree of their expression.
 
 Complements.  ``1 - c`` of a float c is off by the rounding of c itself, which no care afterwards brings back: of a
 coverage of 1 - 1e-9 seven digits of the complement are left.  Who samples such a share therefore hands over its
-complement beside it, and wherever the complement is meant, written as ``1 - c`` or drawn by a rule, that number is taken.
-Through expressions value and complement are carried side by side: ``1 - (1 - c)`` is c, the complement of a product is
-the sum of ``x_1 ... x_{i-1} (1 - x_i)``, that of ``1/x`` is ``(x - 1)/x``; of any other expression it is one minus the
-value.
+complement beside it, and wherever the complement is meant, written as ``1 - c`` or drawn by a rule, that number is
+taken. Through expressions value and complement are carried side by side: ``1 - (1 - c)`` is c, the complement of a
+product is the sum of ``x_1 ... x_{i-1} (1 - x_i)``, that of ``1/x`` is ``(x - 1)/x``; of any other expression it is
+one minus the value.
 """
 
 from __future__ import annotations
@@ -50,7 +50,8 @@ class Samples:
     Raises
     ------
     UsageError
-        An unknown name, arrays of unequal length, a value that is negative or not finite, a complement of another value.
+        An unknown name, arrays of unequal length, a value that is negative or not finite, a complement that does not
+        belong to its value.
     """
 
     def __init__(
@@ -161,7 +162,7 @@ class Samples:
         result = np.empty((len(table), self.count))
         for number, rate in enumerate(table.rates):
             value = _product((rate.coefficient, *(self.factor(factor) for factor in rate.factors)))
-            result[number] = float(value) if isinstance(value, Fraction) else value
+            result[number] = _floats(value, self.count)
         return result
 
     # --- what may change -------------------------------------------------------------------------------------------
@@ -183,8 +184,8 @@ class Samples:
                 self._check(f"{where}: {quantity.text}", quantity, value, kind)
 
     def _check(self, told: str, quantity: Quantity, value: Floats, kind: Kind) -> None:
-        opposite = self.complement(quantity.expression)
-        if kind == "share" and (np.asarray(opposite) < 0).any() and quantity.exact != 1:
+        opposite = _floats(self.complement(quantity.expression), self.count)
+        if kind == "share" and (opposite < 0).any() and quantity.exact != 1:
             where = int(np.argmin(opposite))
             raise UsageError(f"{told} is {value[where]:g} in sample {where}; expected a share of at most 1")
         if (value < 0).any() or not np.isfinite(value).all():
@@ -195,8 +196,8 @@ class Samples:
             raise _other(told, "0", value, int(np.argmin(zero)))
         if kind in ("time", "lasting rate") and quantity.exact != 0 and zero.any():
             raise _other(told, f"{float(quantity.exact):g}", value, int(np.argmax(zero)))
-        if kind == "share" and quantity.exact == 1 and np.any(np.asarray(opposite) != 0):
-            raise _other(told, "1", value, int(np.argmax(np.asarray(opposite) != 0)))
+        if kind == "share" and quantity.exact == 1 and (opposite != 0).any():
+            raise _other(told, "1", value, int(np.argmax(opposite != 0)))
 
 
 def written(model: Model) -> Iterator[tuple[str, Quantity, Kind]]:
@@ -260,6 +261,10 @@ def _array(name: str, value: ArrayLike, model: Model) -> Floats:
     if not np.isfinite(array).all() or (array < 0).any():
         raise UsageError(f"parameter {name}: a value is negative or not finite")
     return array
+
+
+def _floats(value: Value, count: int) -> Floats:
+    return np.full(count, float(value)) if isinstance(value, Fraction) else value
 
 
 def _sum(terms: Iterable[Value]) -> Value:

@@ -1,8 +1,8 @@
 """Exact derivatives of what a spec says with respect to its parameters.
 
 Everything that enters a rate is an exact fraction, and so is its derivative: sums, products and reciprocals are
-differentiated along the tree of the expression, products of factors by the product rule.  A parameter that others follow
-from takes them along; a parameter that follows from others is varied by itself, as if its value were replaced.
+differentiated along the tree of the expression, products of factors by the product rule.  A parameter that others
+follow from takes them along; a parameter that follows from others is varied by itself, as if its value were replaced.
 """
 
 from __future__ import annotations

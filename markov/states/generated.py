@@ -75,6 +75,8 @@ class GeneratedSpace:
                     return np.asarray(good > 0)
         places = self.plan.places_of(subject)
         items = sum(self.charts[island].layout.slots[number].count for island, number in places)
+        if not places:
+            raise IllPosed(f"{subject} is not in this chain")
         if items > 1:
             raise IllPosed(
                 f"{subject} stands for {items} items, which are not up or down as one; ask for a group, "

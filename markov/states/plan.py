@@ -118,6 +118,8 @@ def island_names(model: Model) -> list[str]:
 
 def _islands_in_chain(model: Model, subjects: tuple[str, ...]) -> list[str]:
     every = island_names(model)
+    grouped = {member.name for group in model.groups.values() for member in group.members}
+    every += [name for name in subjects if name in model.units and name not in grouped and name not in every]
     wanted = set(names(model.system)) if model.system is not None else set()
     wanted.update(name for name in every if name in subjects or any(unit in subjects for unit in members(model, name)))
     while True:

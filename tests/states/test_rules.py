@@ -191,3 +191,14 @@ def test_logistics_hold_no_crew() -> None:
     # Little's law: failed = repairs x (delay + repair) + waiting.
     assert busy == pytest.approx(repairs * 10, rel=1e-12)
     assert failed == pytest.approx(repairs * 60 + waiting, rel=1e-12)
+
+
+def test_a_unit_that_only_a_target_names_is_in_the_chain() -> None:
+    text = """
+units: {pump: {failure_rate: 1e-3 /h, repair_time: 10 h}, lift: {failure_rate: 1e-2 /h, repair_time: 30 h}}
+system: pump
+targets: [{id: T, measure: steady_state_unavailability, of: lift, at_most: 0.1}]
+"""
+    (target,) = markov.solve(read_text(text, "spec")).targets
+    assert target.result.value == pytest.approx(0.3 / 1.3, rel=1e-14)
+    assert target.verdict == "missed"
