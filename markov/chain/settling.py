@@ -123,14 +123,14 @@ def follow(
         if shape is None and step.rate * float(now) >= 60.0:
             shape = shape_of(chain, loss, loss_error, int(np.argmax(state.weights)), max(times), "row")
         if shape is not None:
-            low, high, left = _ends(shape, state)
+            low, high, left = fading_between(shape, state)
             # Settled to the proven error of the weights, or to what no float shows.
             if low > 0.0 and high / low - 1.0 <= 3.0 * state.relative + _SETTLED and left <= _negligible(state):
                 guarded = _guarded(shape, rewards, classes) if shape.members.size == chain.n else None
                 for number in order:
                     if number not in found:
                         later = times[number] - now
-                        plainly = _followed(shape, state, rewards, rewards_error, later, low, high, left)
+                        plainly = follow_shape(shape, state, rewards, rewards_error, later, low, high, left)
                         found[number] = (
                             plainly
                             if guarded is None
@@ -173,7 +173,7 @@ def _later(state: Moment, walked: uniformisation.Walk, number: int) -> Moment:
     )
 
 
-def _ends(shape: Shape, state: Moment) -> tuple[float, float, float]:
+def fading_between(shape: Shape, state: Moment) -> tuple[float, float, float]:
     """Return a and b with ``a y <= p <= b y`` on the shape, and a bound of the weight elsewhere."""
     here = state.weights[shape.members]
     slack = state.relative * (1.0 + 1e-6) / (1.0 - state.relative) + 8 * UNIT
@@ -184,7 +184,7 @@ def _ends(shape: Shape, state: Moment) -> tuple[float, float, float]:
     return float(low.min()), float(high.max()), elsewhere
 
 
-def _followed(
+def follow_shape(
     shape: Shape,
     state: Moment,
     rewards: Floats,
@@ -196,7 +196,7 @@ def _followed(
 ) -> Moment:
     """Return weights with integrals at a time after the shape has settled."""
     least, most = Fraction(low) * _fading(shape.fastest * later)[0], Fraction(high) * _fading(shape.slowest * later)[1]
-    shortest, longest = later * _mean_fading(shape.fastest * later)[0], later * _mean_fading(shape.slowest * later)[1]
+    shortest, longest = later * mean_fading(shape.fastest * later)[0], later * mean_fading(shape.slowest * later)[1]
     weights = np.zeros_like(state.weights)
     middle = float((least + most) / 2)
     weights[shape.members] = shape.weights * middle
@@ -266,7 +266,7 @@ def _sharpened(
     here = state.weights[shape.members]
     apart = np.abs(here - settled) + here * (state.relative * 1.001 + 4 * UNIT) + state.absolute
     apart += shape.weights * (float(high - low) + 4 * UNIT * float(high))
-    shortest, longest = later * _mean_fading(shape.fastest * later)[0], later * _mean_fading(shape.slowest * later)[1]
+    shortest, longest = later * mean_fading(shape.fastest * later)[0], later * mean_fading(shape.slowest * later)[1]
     per = _summed(shape.weights, rewards[shape.members])
     integrals, relatives = plainly.integrals.copy(), plainly.integrals_relative.copy()
     slack = Fraction(rewards_error + 8 * UNIT)
@@ -302,7 +302,7 @@ def _fading(x: Fraction) -> tuple[Fraction, Fraction]:
     return _around(_DECIMALS.exp(-_decimal(x)))
 
 
-def _mean_fading(x: Fraction) -> tuple[Fraction, Fraction]:
+def mean_fading(x: Fraction) -> tuple[Fraction, Fraction]:
     """Return bounds of ``(1 - exp(-x)) / x``, the mean of ``exp(-u)`` over ``0 <= u <= x``."""
     if abs(x) < Fraction(1, 10**15):
         # 1 - x/2 + x**2/6 - ...: the next term bounds the rest.
@@ -351,9 +351,9 @@ def look_back(chain: Generator, loss: Doubled, loss_error: float, time: Fraction
             if shape.members.size < chain.n:
                 raise NotReached("the states that must not be left are several classes: survival does not settle")
         if now < time and shape is not None:
-            low, high, _ = _ends(shape, Moment(values, np.zeros(0), relative, absolute, np.zeros(0), 0.0))
+            low, high, _ = fading_between(shape, Moment(values, np.zeros(0), relative, absolute, np.zeros(0), 0.0))
             if low > 0.0 and high / low - 1.0 <= 3.0 * relative + _SETTLED:
-                found = _followed(
+                found = follow_shape(
                     shape,
                     Moment(values, np.zeros(0), relative, absolute, np.zeros(0), 0.0),
                     np.zeros((chain.n, 0)),

@@ -8,39 +8,48 @@ method                      where                                               
 `ladder`                    up to `LADDER_ALWAYS` states; more if time allows      1e-15, any time
 `uniformisation`            any size, few expected jumps (about 1e5)               1e-7 and better
 `settling`                  any size and time, if the chain settles within reach   1e-7 and better
+`windows`                   any size and time                                      1e-9 and better (see below)
 `squaring`                  up to 1,000 states                                     none: an estimate
 ==========================  =====================================================  =====================
 
 Anything else raises NotReached.
+
+`windows` bounds absorption and integrals of rewards, and state probabilities where they have settled; elsewhere its
+state probabilities are an estimate.  It is wide, and says so, where parts of a chain are nearly uncoupled.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from markov.chain import ladder, settling, squaring, uniformisation
+from markov.chain import ladder, missions, settling, squaring, uniformisation
 from markov.chain.bounds import Enclosure, Flags, Floats, Vector, distribution, relative_to_computed
 from markov.chain.doubled import UNIT, Doubled, plain, total, total_error
 from markov.chain.generator import Generator, Restriction
 from markov.errors import NotReached, UsageError
 
-Method = Literal["ladder", "uniformisation", "settling", "squaring"]
+Method = Literal["ladder", "uniformisation", "settling", "windows", "squaring"]
 Time = Fraction | float | int
 
 #: Up to this many states the ladder is taken whatever the time.
 LADDER_ALWAYS = 130
 #: Seconds that the ladder may take where uniformisation cannot bound the answer.
 LADDER_PATIENCE = 25.0
+#: Elementary multiplications, about a second, up to which settling is tried before windows.
+_SETTLING_WORK = 1e9
+#: A relative width that ends the search for a better method.
+_HOPED = 1e-6
 _ROUNDS = "scaling and squaring in double-double"
 _UNIFORM = "uniformisation"
 _SETTLED = "uniformisation, then the settled shape"
+_WINDOWS = "contour windows with a proven bound"
 _ESTIMATE = "scaling and squaring in floats (estimate)"
 
 
@@ -48,6 +57,7 @@ NAMES: dict[Method, str] = {
     "ladder": _ROUNDS,
     "uniformisation": _UNIFORM,
     "settling": _SETTLED,
+    "windows": _WINDOWS,
     "squaring": _ESTIMATE,
 }
 
@@ -174,7 +184,7 @@ def transient(
         states of a class are lumped, which costs nothing and makes large down sets cheap.
     reward_error : float
         Relative error of every reward.
-    method : {"ladder", "uniformisation", "settling", "squaring"}, optional
+    method : {"ladder", "uniformisation", "settling", "windows", "squaring"}, optional
         Take this one, whatever it costs.
 
     Raises
@@ -201,12 +211,11 @@ def transient(
     classes_reached = absorbing_start | (part.absorption.high > 0.0).any(axis=0)
     later = [time for time in exact_times if time > 0]
     run = _Run(part, first.values[members], columns[members], reward_error, later)
-    chosen: Method = method or "ladder"
+    name = NAMES[method or "ladder"]
     outcome: _Outcome | None = None
     if later and members.size:
-        chosen, outcome = run.answer(method)
+        name, outcome = run.answer(method)
     whole = first.total if first.total is not None and not classes_reached.any() else None
-    name = NAMES[chosen]
     earning = np.array([bool((carry & reached & ~stopped).any()) for carry in carried], dtype=bool)
     states, absorbed, integrals = [], [], []
     position = 0
@@ -282,10 +291,33 @@ class _Moment:
     gained: float | None  # of integrals
     off: float
 
+    @property
+    def placed(self) -> float:
+        """Relative error of the weights, inf for an estimate."""
+        return math.inf if self.relative is None else self.relative
+
+    @property
+    def earned(self) -> float:
+        """Relative error of what was absorbed or earned, inf for an estimate."""
+        return math.inf if self.taken is None or self.gained is None else max(self.taken, self.gained)
+
 
 @dataclass(frozen=True, eq=False)
 class _Outcome:
     moments: tuple[_Moment, ...]
+
+    def complete(self, *, states: bool) -> bool:
+        """Whether all is as narrow as one may hope for; `states`: the weights of states count too."""
+        return all(max(each.earned, each.placed if states else 0.0) <= _HOPED for each in self.moments)
+
+    def joined(self, other: _Outcome) -> _Outcome:
+        """Return the narrower weights of states with the narrower amounts, time by time."""
+        moments = []
+        for one, two in zip(self.moments, other.moments, strict=True):
+            earned = one if one.earned <= two.earned else two
+            placed = one if one.placed <= two.placed else two
+            moments.append(replace(earned, weights=placed.weights, relative=placed.relative, absolute=placed.absolute))
+        return _Outcome(tuple(moments))
 
     def at(self, position: int) -> _Moment:
         return self.moments[position]
@@ -326,7 +358,12 @@ class _Run:
             chosen.append("uniformisation")
         if seconds < 3.0:
             chosen.append("ladder")
-        chosen.append("settling")
+        soon = 60.0 * self._slowness(loss)
+        if soon < expected and soon * (step.work + 10_000) < _SETTLING_WORK:
+            chosen.append("settling")
+        chosen.append("windows")
+        if "settling" not in chosen:
+            chosen.append("settling")
         if seconds <= LADDER_PATIENCE:
             chosen.append("ladder")
         if uniformisation.affordable(step, self.times, patient=True):
@@ -335,22 +372,41 @@ class _Run:
             chosen.append("squaring")
         return chosen
 
-    def answer(self, method: Method | None) -> tuple[Method, _Outcome]:
-        """Carry out one method, or the first that reaches a result."""
+    def _slowness(self, loss: Doubled | None) -> float:
+        """Return the fastest exit rate over the slowest but that of the likeliest start: about what settling takes."""
+        exits = self.part.chain.exits.high if loss is None else self.part.chain.exits.high + loss.high
+        slowest = float(np.delete(exits, int(np.argmax(self.start))).min(initial=math.inf))
+        return float(exits.max()) / slowest if slowest > 0.0 else math.inf
+
+    def answer(self, method: Method | None) -> tuple[str, _Outcome]:
+        """Carry out one method, or the first that reaches a result; where windows stay wide, one more beside them."""
         ways: dict[Method, Callable[[], _Outcome]] = {
             "ladder": self._by_ladder,
             "uniformisation": self._by_uniformisation,
             "settling": self._by_settling,
+            "windows": self._by_windows,
             "squaring": self._by_squaring,
         }
         reasons = []
         order: list[Method] = [method] if method else self.candidates()
+        kept: _Outcome | None = None
+        names: list[str] = []
         for each in order:
+            if kept is not None and each == "squaring":
+                continue  # a wide bound is worth more than an estimate
             try:
-                return each, ways[each]()
+                outcome = ways[each]()
             except NotReached as reason:
                 reasons.append(f"{NAMES[each]}: {reason}")
-        raise NotReached("; ".join(dict.fromkeys(reasons)))
+                continue
+            names.append(NAMES[each])
+            kept = outcome if kept is None else kept.joined(outcome)
+            # Stopped chains are asked for what was absorbed; their states are not worth another method.
+            if method or kept.complete(states=not self.classes) or each != "windows":
+                break
+        if kept is None:
+            raise NotReached("; ".join(dict.fromkeys(reasons)))
+        return "; ".join(names), kept
 
     def _by_ladder(self) -> _Outcome:
         loss, loss_error = self.loss()
@@ -421,6 +477,37 @@ class _Run:
                     float(each.integrals_relative[: self.classes].max(initial=0.0)),
                     float(each.integrals_relative[self.classes :].max(initial=0.0)),
                     each.integrals_absolute,
+                )
+                for each in found
+            )
+        )
+
+    def _by_windows(self) -> _Outcome:
+        loss, loss_error = self.loss()
+        lost = plain(np.zeros(self.part.chain.n)) if loss is None else loss
+        absorption = self.part.absorption.high + self.part.absorption.low
+        found = missions.follow(
+            self.part.chain,
+            lost,
+            loss_error,
+            self.start,
+            np.concatenate((absorption, self.rewards), axis=1),
+            self.part.absorption_error + UNIT,
+            self.reward_error,
+            self.times,
+            self.classes,
+        )
+        return _Outcome(
+            tuple(
+                _Moment(
+                    each.weights,
+                    each.integrals[: self.classes],
+                    each.integrals[self.classes :],
+                    each.weights_relative,
+                    each.weights_absolute,
+                    float(each.relative[: self.classes].max(initial=0.0)),
+                    float(each.relative[self.classes :].max(initial=0.0)),
+                    2.0**-1060,
                 )
                 for each in found
             )
