@@ -57,7 +57,8 @@ def print_solution(solution: Solution, console: Console) -> None:
         _heading(console, "Targets")
         console.print(_target_table(solution.targets))
     _heading(console, "Results")
-    console.print(_result_table(tuple(result for result in solution.results if _matters(result))))
+    asked = {target.result for target in solution.targets}
+    console.print(_result_table(tuple(each for each in solution.results if each in asked or _matters(each))))
     console.print(
         Padding(
             "The last column is proven: the exact answer of the model is no farther from the value, relative to it.",
