@@ -124,7 +124,10 @@ def _nearest(word: str, candidates: tuple[str, ...]) -> str | None:
     by_plain: dict[str, str] = {}
     for name in candidates:
         by_plain.setdefault(_comparable(name), name)
-    close = get_close_matches(_comparable(word), list(by_plain), n=1, cutoff=0.72)
+    plain = _comparable(word)
+    if plain not in by_plain and sum(plain in each for each in by_plain) > 1:
+        return None  # part of several: a guess between `cold_standby` and `hot_standby` would change the numbers
+    close = get_close_matches(plain, list(by_plain), n=1, cutoff=0.72)
     return by_plain[close[0]] if close else None
 
 

@@ -174,3 +174,8 @@ def test_group_is_a_member_once(told):
 def test_unit_and_group_need_different_names(told):
     text = SPEC.replace("diesel", "water") % "members: [pump]"
     assert "is the name of a unit, too" in told(text).found
+
+
+def test_half_a_word_is_not_taken_for_one_of_several(told):
+    group = "{members: [{unit: a, count: 2}], redundancy: standby}"
+    assert told(f"units: {{a: {{failure_rate: 1 /h}}}}\ngroups: {{g: {group}}}\nsystem: g\n").fix == "write one of these"
