@@ -178,4 +178,6 @@ def test_unit_and_group_need_different_names(told):
 
 def test_half_a_word_is_not_taken_for_one_of_several(told):
     group = "{members: [{unit: a, count: 2}], redundancy: standby}"
-    assert told(f"units: {{a: {{failure_rate: 1 /h}}}}\ngroups: {{g: {group}}}\nsystem: g\n").fix == "write one of these"
+    assert (
+        told(f"units: {{a: {{failure_rate: 1 /h}}}}\ngroups: {{g: {group}}}\nsystem: g\n").fix == "write one of these"
+    )
