@@ -460,6 +460,25 @@ class _Run:
             )
         )
 
+    def _moment(
+        self,
+        weights: Floats,
+        integrals: Floats,
+        error: tuple[float | None, float],
+        relative: Floats,
+        absolute: float,
+    ) -> _Moment:
+        """Split integrals into absorption by class, which comes first, and rewards, with the worst error of each."""
+        return _Moment(
+            weights,
+            integrals[: self.classes],
+            integrals[self.classes :],
+            *error,
+            float(relative[: self.classes].max(initial=0.0)),
+            float(relative[self.classes :].max(initial=0.0)),
+            absolute,
+        )
+
     def _by_settling(self) -> _Outcome:
         loss, loss_error = self.loss()
         lost = plain(np.zeros(self.part.chain.n)) if loss is None else loss
@@ -468,14 +487,11 @@ class _Run:
         )
         return _Outcome(
             tuple(
-                _Moment(
+                self._moment(
                     each.weights,
-                    each.integrals[: self.classes],
-                    each.integrals[self.classes :],
-                    each.relative,
-                    each.absolute,
-                    float(each.integrals_relative[: self.classes].max(initial=0.0)),
-                    float(each.integrals_relative[self.classes :].max(initial=0.0)),
+                    each.integrals,
+                    (each.relative, each.absolute),
+                    each.integrals_relative,
                     each.integrals_absolute,
                 )
                 for each in found
@@ -499,14 +515,11 @@ class _Run:
         )
         return _Outcome(
             tuple(
-                _Moment(
+                self._moment(
                     each.weights,
-                    each.integrals[: self.classes],
-                    each.integrals[self.classes :],
-                    each.weights_relative,
-                    each.weights_absolute,
-                    float(each.relative[: self.classes].max(initial=0.0)),
-                    float(each.relative[self.classes :].max(initial=0.0)),
+                    each.integrals,
+                    (each.weights_relative, each.weights_absolute),
+                    each.relative,
                     2.0**-1060,
                 )
                 for each in found

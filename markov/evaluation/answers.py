@@ -232,10 +232,10 @@ class Answers:
         return _MEASURES[question.measure](self, question)
 
     def _reliability(self, question: Question) -> Enclosure:
-        return self._stopped_at_failure(question.of).alive[self._times.index(_time(question))]
+        return self._stopped_at_failure(question.of).alive[self._times.index(question.time)]
 
     def _unreliability(self, question: Question) -> Enclosure:
-        return self._failed_by(_time(question), question.of)
+        return self._failed_by(question.time, question.of)
 
     def _interval_reliability(self, question: Question) -> Enclosure:
         if question.for_hours is None:
@@ -256,11 +256,11 @@ class Answers:
         return self.share_of_states(~self.up(question.of), question.at_hours)
 
     def _mean_unavailability(self, question: Question) -> Enclosure:
-        at = _positive_time(question)
+        at = question.positive_time
         return self._integral(at, question.of, 0).over(at).capped()
 
     def _mean_availability(self, question: Question) -> Enclosure:
-        at = _positive_time(question)
+        at = question.positive_time
         up = self._integral(at, question.of, 2).over(at).capped()
         return up.meet(self._mean_unavailability(question).complement()) if up.lower is not None else up
 
@@ -304,7 +304,7 @@ class Answers:
         return self._states_at(question.at_hours).weighted(self._failure_flow(question.of))
 
     def _expected_failures(self, question: Question) -> Enclosure:
-        return self._integral(_time(question), question.of, 1)
+        return self._integral(question.time, question.of, 1)
 
     def _failures_per_year(self, question: Question) -> Enclosure:
         return self.per_year(self._frequency(question.of))
@@ -319,7 +319,7 @@ class Answers:
         return self._failure_frequency(question) / up
 
     def _hazard_rate(self, question: Question) -> Enclosure:
-        alive = self._alive_at(_time(question), question.of)
+        alive = self._alive_at(question.time, question.of)
         survivors = self._reliability(question)
         if survivors.upper == 0:
             raise IllPosed("nothing survives to this time, so there is no hazard")
@@ -328,7 +328,7 @@ class Answers:
         return alive.weighted(self._failure_flow(question.of)) / survivors
 
     def _mean_failure_rate(self, question: Question) -> Enclosure:
-        at = _positive_time(question)
+        at = question.positive_time
         return self._failed_by(at, question.of).over(at)
 
     def _state_probability(self, question: Question) -> Enclosure:
@@ -360,19 +360,6 @@ class Answers:
 
 #: Measures that are integrals over time, worked out together for all subjects.
 _INTEGRALS = frozenset({"mean_availability", "mean_unavailability", "expected_failures"})
-
-
-def _time(question: Question) -> Fraction:
-    if question.at_hours is None:
-        raise IllPosed("needs a time: give `at`, or a mission time")
-    return question.at_hours
-
-
-def _positive_time(question: Question) -> Fraction:
-    at = _time(question)
-    if at == 0:
-        raise IllPosed("an average over no time: the time is zero")
-    return at
 
 
 _MEASURES: dict[str, Callable[[Answers, Question], Enclosure]] = {

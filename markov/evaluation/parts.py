@@ -201,9 +201,7 @@ class Parts:
         return self._survival(question).down
 
     def _mean_failure_rate(self, question: Question) -> Enclosure:
-        if not question.at_hours:
-            raise IllPosed("an average over no time: the time is zero")
-        return self._survival(question).down.over(question.at_hours)
+        return self._survival(question).down.over(question.positive_time)
 
     def _hazard_rate(self, question: Question) -> Enclosure:
         self._series()

@@ -6,6 +6,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
+from markov.errors import IllPosed
 from markov.measures import MEASURES, Measure
 from markov.model import Model, Target
 
@@ -24,6 +25,32 @@ class Question:
     def asked(self) -> Measure:
         """The measure with its unit and timing."""
         return MEASURES[self.measure]
+
+    @property
+    def time(self) -> Fraction:
+        """The time asked for, in hours.
+
+        Raises
+        ------
+        IllPosed
+            There is none.
+        """
+        if self.at_hours is None:
+            raise IllPosed("needs a time: give `at`, or a mission time")
+        return self.at_hours
+
+    @property
+    def positive_time(self) -> Fraction:
+        """The time asked for, in hours, to be averaged over.
+
+        Raises
+        ------
+        IllPosed
+            There is none, or it is zero.
+        """
+        if self.time == 0:
+            raise IllPosed("an average over no time: the time is zero")
+        return self.time
 
 
 def subjects_of(model: Model) -> tuple[str, ...]:

@@ -167,12 +167,12 @@ class Recipes(Generic[T]):
         return self.chain.capped(self._mean(self._down(question.of), question.at_hours))
 
     def _mean_availability(self, question: Question) -> T:
-        time = _positive_time(question)
+        time = question.positive_time
         up = self.chain.times(self.chain.integral(time, self._up(question.of)), 1 / time)
         return self.chain.capped(self.chain.beside(up, self._mean_unavailability(question)))
 
     def _mean_unavailability(self, question: Question) -> T:
-        time = _positive_time(question)
+        time = question.positive_time
         down = self.chain.times(self.chain.integral(time, self._down(question.of)), 1 / time)
         return self.chain.capped(down)
 
@@ -192,22 +192,22 @@ class Recipes(Generic[T]):
     # --- failures --------------------------------------------------------------------------------------------------
 
     def _reliability(self, question: Question) -> T:
-        alive = self.chain.alive(_time(question), question.of, self._everywhere())
+        alive = self.chain.alive(question.time, question.of, self._everywhere())
         return self.chain.capped(self.chain.beside(alive, self._unreliability(question)))
 
     def _everywhere(self) -> PerState:
         return PerState(np.ones(self.chain.answers.space.size))
 
     def _unreliability(self, question: Question) -> T:
-        return self.chain.capped(self.chain.failed(_time(question), question.of))
+        return self.chain.capped(self.chain.failed(question.time, question.of))
 
     def _hazard_rate(self, question: Question) -> T:
-        time = _time(question)
+        time = question.time
         failing = self.chain.alive(time, question.of, self._failures(question.of))
         return self._over(failing, self._reliability(question), "nothing survives to this time, so there is no hazard")
 
     def _mean_failure_rate(self, question: Question) -> T:
-        time = _positive_time(question)
+        time = question.positive_time
         return self.chain.times(self.chain.failed(time, question.of), 1 / time)
 
     def _first(self, question: Question) -> tuple[T, T]:
@@ -237,7 +237,7 @@ class Recipes(Generic[T]):
         return self._passages(self._unavailability(question), question)
 
     def _expected_failures(self, question: Question) -> T:
-        return self.chain.integral(_time(question), self._failures(question.of))
+        return self.chain.integral(question.time, self._failures(question.of))
 
     def _failures_per_year(self, question: Question) -> T:
         return self._per_year(self._frequency(question))
@@ -351,19 +351,6 @@ def _calls(plant: GeneratedSpace, upkeep: Upkeep, of: str | None) -> tuple[PerAr
         calls += new
         refused += np.maximum(new - np.maximum(pool.size - before, 0), 0)
     return PerArrow(calls), PerArrow(refused)
-
-
-def _time(question: Question) -> Fraction:
-    if question.at_hours is None:
-        raise IllPosed("needs a time: give `at`, or a mission time")
-    return question.at_hours
-
-
-def _positive_time(question: Question) -> Fraction:
-    at = _time(question)
-    if at == 0:
-        raise IllPosed("an average over no time: the time is zero")
-    return at
 
 
 _CREWS = frozenset({"crew_utilisation", "waiting_for_crew", "probability_of_waiting"})
