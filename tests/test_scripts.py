@@ -86,7 +86,10 @@ class Machine:
 
     def run(self, *arguments: str, command: str | Path | None = None) -> tuple[int, str, str]:
         with self.start(*arguments, command=command) as process:
-            out, err = process.communicate(timeout=120)
+            try:
+                out, err = process.communicate(timeout=120)
+            finally:
+                process.kill()
         return process.returncode, out, err
 
     @property

@@ -1,11 +1,14 @@
 """The program at a terminal, in a pipe, interrupted."""
 
+import errno
 import os
 import re
 import signal
 import subprocess
 import sys
 import time
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 
 import pytest
@@ -115,17 +118,43 @@ def test_patience_is_two_seconds() -> None:
 # --- pipes
 
 
-def _started(folder: Path, checkout: Path, *arguments: str, **options: object) -> subprocess.Popen[str]:
+def _hearing_interrupts() -> None:
+    """Undo, in the child, that a run in the background ignores interrupts: what is ignored is inherited."""
+    signal.signal(signal.SIGINT, signal.SIG_DFL)
+
+
+@contextmanager
+def _started(folder: Path, checkout: Path, *arguments: str, **options: object) -> Iterator[subprocess.Popen[str]]:
+    """The program in a process of its own, which does not outlive the test."""
     environment = {**os.environ, "PYTHONPATH": os.fspath(checkout), **options.pop("env", {})}
-    return subprocess.Popen(
+    process = subprocess.Popen(
         [sys.executable, "-m", "markov", *arguments],
         cwd=folder,
         env=environment,
         stderr=subprocess.PIPE,
         text=True,
         encoding="utf-8",
+        preexec_fn=_hearing_interrupts if os.name == "posix" else None,
         **options,
     )
+    with process:
+        try:
+            yield process
+            process.wait(timeout=60)
+        finally:
+            process.kill()
+
+
+def _opened_by_its_reader(pipe: Path) -> int:
+    """The writing end of a named pipe, as soon as somebody reads it."""
+    until = time.monotonic() + 60
+    while True:
+        try:
+            return os.open(pipe, os.O_WRONLY | os.O_NONBLOCK)
+        except OSError as nobody_reads:
+            if nobody_reads.errno != errno.ENXIO or time.monotonic() > until:
+                raise
+            time.sleep(0.01)
 
 
 def _into_a_closed_pipe(folder: Path, checkout: Path, *arguments: str) -> tuple[int, str]:
@@ -231,7 +260,7 @@ def test_an_interrupt_ends_quietly_and_leaves_nothing_behind(
 ) -> None:
     os.mkfifo(program.folder / "slow")
     with _started(program.folder, checkout, *arguments, stdout=subprocess.PIPE) as process:
-        writer = os.open(program.folder / "slow", os.O_WRONLY)  # waits until the program reads the spec
+        writer = _opened_by_its_reader(program.folder / "slow")
         process.send_signal(signal.SIGINT)
         out, err = process.communicate(timeout=60)
         os.close(writer)
