@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import numpy as np
 from numpy.typing import ArrayLike
 
 from markov.chain.bounds import Vector, relative_to_computed
@@ -28,11 +27,8 @@ def flow(generator: Generator, leaving: ArrayLike, entering: ArrayLike) -> Vecto
         passages).
     """
     here, there = as_flags(leaving, generator.n), as_flags(entering, generator.n)
-    members = np.flatnonzero(here)
-    label = np.where(there & ~here, 0, -1)
     if (here & there).any():
         raise UsageError("states to leave and states to enter overlap")
-    part = generator.restricted(members, label, 1)
-    values = np.zeros(generator.n)
-    values[members] = part.absorption.high[:, 0] + part.absorption.low[:, 0]
-    return Vector(values, relative_to_computed(part.absorption_error + UNIT), 0.0, "sum of rates", values > 0.0)
+    rates, error = generator.crossing(here, there)
+    values = rates.high + rates.low
+    return Vector(values, relative_to_computed(error + UNIT), 0.0, "sum of rates", values > 0.0)

@@ -26,7 +26,7 @@ from numpy.typing import NDArray
 from scipy.sparse import csr_array
 
 from markov.chain.bounds import Floats
-from markov.chain.generator import Generator, entered_first
+from markov.chain.generator import Generator, entered_first, stretch
 from markov.errors import NotReached
 
 Side = Literal["row", "column"]
@@ -91,12 +91,7 @@ class Grounded:
             pieces = -(-(end - begin) // most)
             cuts = [begin + (end - begin) * piece // pieces for piece in range(pieces + 1)]
             for first, last in pairwise(cuts):
-                here = slice(int(matrix.indptr[first]), int(matrix.indptr[last]))
-                rows = csr_array(
-                    (matrix.data[here], matrix.indices[here], matrix.indptr[first : last + 1] - here.start),
-                    shape=(last - first, self.m),
-                )
-                found.append((slice(first, last), rows))
+                found.append((slice(first, last), stretch(matrix, first, last)))
             begin = end
         return found
 

@@ -16,17 +16,18 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from functools import cached_property
-from typing import Any, Literal
+from functools import cached_property, partial
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from markov.chain import dense
+from markov.chain.arrangement import Arrangement, Side, arrange
 from markov.chain.bounds import Floats
 from markov.chain.doubled import ADD, DIVIDE, MULTIPLY, Doubled, add, divide, multiply, plain, total, total_error, zeros
-from markov.chain.generator import Generator, Restriction, by_target, entered_first
-from markov.chain.mmatrix import Flow, Solver, solve_certified
+from markov.chain.generator import Generator
+from markov.chain.mmatrix import Flow, Readings, Solver, solve_certified
 from markov.chain.sweeps import sweeps
 from markov.errors import NotReached
 
@@ -55,18 +56,25 @@ class Hub:
     loss: Doubled
     loss_error: float
     number: int
-    level: NDArray[np.int64] | None = None
+    level: NDArray[np.integer[Any]] | None = None
 
     @cached_property
-    def others(self) -> NDArray[np.int64]:
-        """Numbers of all states but the hub."""
-        return np.delete(np.arange(self.chain.n), self.number)
+    def _arranged(self) -> Arrangement:
+        return arrange(self.chain, self.number, self.level)
+
+    @property
+    def others(self) -> NDArray[np.integer[Any]]:
+        """Numbers of all states but the hub, in order of level."""
+        return self._arranged.others
+
+    @property
+    def _off(self) -> slice | NDArray[np.integer[Any]]:
+        return slice(1, None) if self._arranged.order is None else self.others
 
     @cached_property
-    def _part(self) -> Restriction:
-        label = np.full(self.chain.n, -1)
-        label[self.number] = 0
-        return self.chain.restricted(self.others, label, 1)
+    def readings(self) -> Readings:
+        """How many rates the solver has read so far."""
+        return Readings()
 
     @property
     def method(self) -> str:
@@ -74,15 +82,21 @@ class Hub:
         return f"{self.row[1].name}, certified entry by entry"
 
     @cached_property
+    def _inward(self) -> tuple[Doubled, float]:
+        there = np.zeros(self.chain.n, dtype=bool)
+        there[self.number] = True
+        rates, error = self.chain.crossing(~there, there)
+        return rates.at(self._off), error
+
+    @property
     def inward(self) -> Doubled:
-        """Rates into the hub, Doubled[n - 1], relative error that of the rates."""
-        found = self._part.absorption
-        return Doubled(found.high[:, 0], found.low[:, 0])
+        """Rates into the hub, Doubled[n - 1], relative error `inward_error`."""
+        return self._inward[0]
 
     @property
     def inward_error(self) -> float:
         """Relative error of `inward`."""
-        return self._part.absorption_error
+        return self._inward[1]
 
     @cached_property
     def outward(self) -> Doubled:
@@ -91,57 +105,42 @@ class Hub:
         found = zeros(self.chain.n)
         target = self.chain.target[here]
         found.high[target], found.low[target] = self.chain.rates.at(here)
-        return found.at(self.others)
+        return found.at(self._off)
 
     @cached_property
     def _exits(self) -> tuple[Doubled, float]:
-        exits = add(self.chain.exits, self.loss).at(self.others)
+        if not self.loss.high.any():
+            return self.chain.exits.at(self._off), self.chain.exit_error
+        exits = add(self.chain.exits, self.loss).at(self._off)
         return exits, max(self.chain.exit_error, self.loss_error) + ADD
 
-    def _flow(self, side: Literal["row", "column"]) -> Flow:
-        inner = self._part.chain
-        if side == "column":
-            return Flow(inner.target, inner.source, inner.rates, inner.rate_error, *self._exits)
-        order = by_target(inner)
-        return Flow(inner.source[order], inner.target[order], inner.rates.at(order), inner.rate_error, *self._exits)
+    def _flow(self, side: Side) -> Flow:
+        exits, exit_error = self._exits
+        incoming = self._arranged.rates(side, self.chain.high)
+        bring_low = partial(_low, self._arranged, side)  # not a method: large arrays would wait in a circle for release
+        return Flow(incoming, bring_low, self.chain.rate_error, exits, exit_error, self.readings)
 
     @cached_property
     def row(self) -> tuple[Flow, Solver]:
         """The system of times spent off the hub, with its solver."""
         flow = self._flow("row")
-        return flow, self._dense or sweeps(flow, self._levels)
+        return flow, self._dense or sweeps(flow, self._arranged.ends)
 
     @cached_property
     def column(self) -> tuple[Flow, Solver]:
         """The system of values per state, with its solver."""
         flow = self._flow("column")
-        return flow, self._dense.turned("column") if self._dense else sweeps(flow, self._levels)
+        return flow, self._dense.turned("column") if self._dense else sweeps(flow, self._arranged.ends)
 
     @cached_property
     def _dense(self) -> dense.DenseElimination | None:
-        inner = self._part.chain
-        if inner.n > dense.LARGEST_DENSE:
+        if self.chain.n - 1 > dense.LARGEST_DENSE:
             return None
-        away = self.loss.at(self.others)
-        return dense.eliminate(inner.matrix().toarray(), self.inward.high + self.inward.low + away.high + away.low)
+        rates = self._arranged.rates("column", self.chain.high)[:, 1:].toarray()
+        away = self.loss.at(self._off)
+        return dense.eliminate(rates, self.inward.high + self.inward.low + away.high + away.low)
 
-    @cached_property
-    def _levels(self) -> NDArray[np.int64]:
-        if self.level is not None:
-            return self.level[self.others]
-        level = np.full(self.chain.n, -1, dtype=np.int64)
-        level[self.number] = 0
-        pattern = self.chain.matrix()
-        frontier: NDArray[np.integer[Any]] = np.array([self.number])
-        depth = 0
-        while frontier.size:
-            depth += 1
-            frontier = entered_first(pattern, frontier, level >= 0)
-            level[frontier] = depth
-        level[level < 0] = depth
-        return level[self.others]
-
-    def solve(self, side: Literal["row", "column"], b: Doubled, b_error: float) -> tuple[Doubled, float]:
+    def solve(self, side: Side, b: Doubled, b_error: float) -> tuple[Doubled, float]:
         """Solve one system off the hub, certified."""
         flow, solver = self.row if side == "row" else self.column
         return solve_certified(flow, b, b_error, solver)
@@ -153,7 +152,7 @@ class Hub:
 
     def _joined(self, at_hub: Doubled, off: Doubled) -> Doubled:
         found = zeros(self.chain.n)
-        found.high[self.others], found.low[self.others] = off
+        found.high[self._off], found.low[self._off] = off
         found.high[self.number], found.low[self.number] = at_hub.high.reshape(-1)[0], at_hub.low.reshape(-1)[0]
         return found
 
@@ -166,7 +165,7 @@ class Hub:
     def _leave(self) -> tuple[Doubled, float]:
         """Rate of absorption per unit of time at the hub, excursions included."""
         off, error = self.excursion
-        escaping = total(multiply(off, self.loss.at(self.others)))
+        escaping = total(multiply(off, self.loss.at(self._off)))
         error = (error + self.loss_error + MULTIPLY + total_error(self.chain.n) + ADD) * _SLACK
         found = add(self.loss.at(self.number), escaping)
         if not float(found.high) > 0.0:
@@ -177,13 +176,13 @@ class Hub:
         """Return the time spent in each state before absorption, Doubled[n], with its relative error."""
         leave, leave_error = self._leave
         excursion, excursion_error = self.excursion
-        away = start.at(self.others)
+        away = start.at(self._off)
         first, first_error = zeros(self.chain.n - 1), 0.0
         arrival = start.at(self.number)
         if away.high.any():
             first, first_error = self.solve("row", away, start_error)
             arrival = add(arrival, total(multiply(first, self.inward)))
-        step = MULTIPLY + total_error(self.chain.n) + ADD + self._part.absorption_error
+        step = MULTIPLY + total_error(self.chain.n) + ADD + self.inward_error
         at_hub = divide(arrival, leave)
         error = first_error + start_error + step + leave_error + DIVIDE
         off = add(first, multiply(excursion, at_hub))
@@ -194,7 +193,7 @@ class Hub:
         ones = plain(np.ones(self.chain.n - 1))
         before, before_error = self.solve("column", ones, 0.0)
         back, back_error = self.solve("column", self.inward, self.inward_error)
-        gone, gone_error = self.solve("column", self.loss.at(self.others), self.loss_error)
+        gone, gone_error = self.solve("column", self.loss.at(self._off), self.loss_error)
         step = MULTIPLY + total_error(self.chain.n) + ADD + self.chain.rate_error
         length = add(plain(1.0), total(multiply(self.outward, before)))
         leave = add(self.loss.at(self.number), total(multiply(self.outward, gone)))
@@ -204,12 +203,17 @@ class Hub:
         return self._joined(at_hub, off), (error + back_error + MULTIPLY + ADD) * _SLACK
 
 
+def _low(arranged: Arrangement, side: Side) -> Floats:
+    found: Floats = arranged.rates(side, arranged.chain.low).data
+    return found
+
+
 def with_likely_hub(
     chain: Generator,
     loss: Doubled,
     loss_error: float,
     guess: int,
-    level: NDArray[np.int64] | None = None,
+    level: NDArray[np.integer[Any]] | None = None,
     work: Callable[[Hub], tuple[Doubled, float]] = lambda hub: hub.excursion,
 ) -> Hub:
     """Return the chain grounded at a likely state, found by trying.

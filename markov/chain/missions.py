@@ -23,8 +23,9 @@ from markov.chain.bounds import Floats
 from markov.chain.contour import RATIO, SIZES, contour
 from markov.chain.doubled import UNIT, Doubled
 from markov.chain.generator import Generator
-from markov.chain.grounded import Grounded, ground
 from markov.chain.hub import with_likely_hub
+from markov.chain.hubs import Hubs, Shares, hubs_of, shares_of
+from markov.chain.parts import likely_states
 from markov.chain.shape import Shape, shape_of
 from markov.chain.tail import Tail, joined, settled
 from markov.chain.weights import Weights, verified
@@ -108,6 +109,8 @@ class _Best:
     def take(self, middle: Floats, error: Floats, reason: str) -> None:
         """Take one more proven interval around each quantity."""
         before = self.width()
+        known = np.isfinite(middle) & np.isfinite(error)
+        middle, error = np.where(known, middle, 0.0), np.where(known, error, math.inf)
         self.lower = np.maximum(self.lower, middle - error - 4.0 * UNIT * middle)
         self.upper = np.minimum(self.upper, middle + error + 4.0 * UNIT * middle)
         if bool((self.lower > self.upper).any()):
@@ -187,6 +190,7 @@ class _Task:
 
     chain: Generator
     loss: Doubled
+    loss_error: float
     start: Floats
     columns: Floats
     classes: int
@@ -218,7 +222,7 @@ class _Task:
         rates = np.concatenate((chain.high, lost[lost > 0.0]))
         if rates.size and float(rates.min()) * scale < 1e-100:
             raise NotReached("rates span more than a hundred powers of ten")
-        most = np.full(columns.shape[1], math.fsum(start.tolist()) * (1.0 + 4 * UNIT))
+        most = np.where(columns.any(axis=0), math.fsum(start.tolist()) * (1.0 + 4 * UNIT), 0.0)
         best = []
         for time in times:
             ceiling = most.copy()
@@ -227,6 +231,7 @@ class _Task:
         return cls(
             chain,
             loss,
+            loss_error,
             start,
             np.concatenate((columns, lost[:, None]), axis=1) * scale,
             classes,
@@ -264,7 +269,9 @@ class _Task:
         prepared: Prepared | None = None
         past = math.inf
         for _ in range(_ATTEMPTS):
-            begun = self._uniformise([Fraction(jumps)], [])
+            # What has passed before windows begin is uniformised on the way.
+            passed = [number for number in late if self.times[number] < jumps]
+            begun = self._uniformise([*(self.times[number] for number in passed), Fraction(jumps)], passed)
             if prepared is None:
                 prepared = self._prepare(begun, late)
             self._run(prepared, begun, size, late)
@@ -278,7 +285,7 @@ class _Task:
             # A later beginning mends what oscillates; what rounding or slow modes cost it does not.
             helps = self.best[worst].reason == _JOINING or not width < 1e3 or width < 0.9 * past
             past, jumps = width, jumps * RATIO
-            if not helps or jumps > _MOST_JUMPS or float(self.times[worst]) < 2.0 * jumps:
+            if not helps or jumps > _MOST_JUMPS:
                 return
             if not uniformisation.affordable(self.step, [Fraction(jumps) * Fraction(self.scale)]):
                 return
@@ -303,19 +310,18 @@ class _Task:
         )
 
     def _prepare(self, begun: _Begun, late: list[int]) -> Prepared:
-        """Ground the chain at a likely state and verify weights for all times."""
+        """Ground the chain at likely states and verify weights for all times."""
         lost = self.loss.high + self.loss.low
         last = max(float(self.times[number]) for number in late)
         ceilings = np.ones(self.columns.shape[1] - 1)
         ceilings[self.classes :] = self.columns[:, self.classes : -1].max(axis=0, initial=0.0) * last * _SLACK
 
-        def weigh(grounded: Grounded, kappa: float, time: float) -> Weights:
+        def weigh(hubs: Hubs, shares: Shares, kappa: float, time: float) -> Weights:
             return verified(
-                grounded,
-                self.columns[grounded.order, :-1],
-                self.columns[grounded.hub, :-1],
-                self.columns[grounded.order, -1],
-                float(self.columns[grounded.hub, -1]),
+                hubs,
+                shares,
+                self.columns[hubs.grounded.order, :-1],
+                self.columns[hubs.states, :-1],
                 kappa=kappa,
                 time=time,
                 whole=0 if self.classes == 1 else None,
@@ -325,74 +331,95 @@ class _Task:
 
         made: list[Weights] = []
         trouble = NotReached("no likely state was found")
-        hub: int | None = int(np.argmax(begun.weights))
-        tried: list[int] = []
-        while hub is not None and len(tried) < _HUBS:
-            tried.append(hub)
-            grounded = ground(self.chain, lost, hub, self.scale)
-            hub = None
+        likely = int(np.argmax(begun.weights))
+        first: list[int] | None = likely_states(self.chain, lost, likely).states if self.chain.n <= _SMALL else [likely]
+        tried: list[list[int]] = []
+        found: tuple[Hubs, Shares] | None = None
+        while first is not None and len(tried) < _HUBS:
+            tried.append(first)
+            hubs = hubs_of(self.chain, lost, first, self.scale)
+            first = None
             try:
-                made = [weigh(grounded, 0.0, last)]
+                shares = shares_of(hubs, self.entry_error)
+                made = [weigh(hubs, shares, 0.0, last)]
             except NotReached as reason:
                 trouble = reason
-                hub = self._kept(begun, tried)
+                first = self._other(begun, tried)
             else:
-                if float(made[0].excursion.max(initial=0.0)) > 4.0:
-                    other = int(grounded.order[int(np.argmax(made[0].excursion))])
-                    hub = other if other not in tried else None
-        order, hub = grounded.order, grounded.hub
+                found = hubs, shares
+                first = _likelier(hubs, made[0], tried)
+        if found is None:
+            hubs = hubs_of(self.chain, lost, tried[0], self.scale)
+            found = hubs, shares_of(hubs, self.entry_error)
+        hubs, shares = found
         longest = made[0].longest if made else math.inf
         short = sorted(float(self.times[number]) for number in late if float(self.times[number]) < 30.0 * longest)
         for time in {short[0], short[len(short) // 2], short[-1]} if short else ():
             for power in (1.0, 4.0):
                 try:
-                    made.append(weigh(grounded, power / time, time * _SLACK))
+                    made.append(weigh(hubs, shares, power / time, time * _SLACK))
                 except NotReached as reason:
                     trouble = reason
         if not made:
             raise trouble
+        order = hubs.grounded.order
         question = Question(
-            grounded,
+            hubs,
+            shares,
             tuple(made),
             self.start[order],
-            float(self.start[hub]),
+            self.start[hubs.states],
             math.fsum(self.start.tolist()),
             self.columns[order],
-            self.columns[hub],
-            float(self.chain.exits.high[hub] + lost[hub]) * self.scale,
+            self.columns[hubs.states],
             ceilings,
             self.entry_error,
         )
         return Prepared.of(question)
 
-    def _kept(self, begun: _Begun, tried: list[int]) -> int | None:
+    def _other(self, begun: _Begun, tried: list[list[int]]) -> list[int] | None:
+        """Return what to ground the chain at where the first choice failed."""
+        likely = int(np.argmax(begun.weights))
+        if [likely] not in tried:
+            return [likely]
+        kept = self._kept(begun)
+        if kept is not None and [kept] not in tried:
+            return [kept]
+        if self.chain.n > _SMALL:
+            several = likely_states(self.chain, self.loss.high, likely).states
+            return several if several not in tried else None
+        return None
+
+    def _kept(self, begun: _Begun) -> int | None:
         """Return the likeliest state of a class that is never left, if there is one without absorption."""
         lost = self.loss.high > 0.0
         closed = [members for members in self.chain.closed_classes() if not bool(lost[members].any())]
         if len(closed) != 1:
             return None
-        likely = int(closed[0][int(np.argmax(begun.weights[closed[0]]))])
-        return None if likely in tried else likely
+        return int(closed[0][int(np.argmax(begun.weights[closed[0]]))])
 
     def _run(self, prepared: Prepared, begun: _Begun, size: int, late: list[int]) -> None:
         """Follow the chain once, from the end of uniformisation to the largest time."""
         question = prepared.question
-        order, hub = question.grounded.order, question.grounded.hub
+        order, hubs = question.hubs.grounded.order, question.hubs.states
+        shares = question.shares.of(begun.weights[order], begun.weights[hubs])
         rows = prepared.watch.shape[0]
         state = State(
             begun.time,
             begun.weights[order],
-            float(begun.weights[hub]),
+            begun.weights[hubs],
+            shares,
+            question.shares.of(begun.off[order], begun.off[hubs]) * _SLACK + 4.0 * UNIT * shares,
             (prepared.costs @ begun.off[order]) * _SLACK,
             begun.earned,
             begun.earned_off,
             np.zeros(rows),
             math.inf
             if prepared.steady is None
-            else float(prepared.steady.most(begun.off[order], float(begun.off[hub]))),
+            else float(prepared.steady.most(begun.off[order], float(begun.off[hubs[0]]))),
         )
         nodes = contour(size)
-        waiting = sorted(late, key=lambda number: self.times[number])
+        waiting = sorted((each for each in late if self.times[each] >= begun.time), key=lambda each: self.times[each])
         more = 0 if self.classes and self.chain.n > _SMALL else _MORE_WINDOWS
         while waiting:
             if self._by_tail(prepared, state, waiting):
@@ -424,9 +451,12 @@ class _Task:
         if self.tail is None:
             return False
         for number in waiting:
-            self._keep(
-                prepared, number, joined(prepared, state, self.tail, self.times[number]), "joining the settled shape"
-            )
+            try:
+                later = joined(prepared, state, self.tail, self.times[number])
+            except NotReached:
+                self.tail, self.tailless = None, True
+                return False
+            self._keep(prepared, number, later, "joining the settled shape")
         return all(self.best[number].width() <= self.target for number in waiting)
 
     def _settled(self, prepared: Prepared, state: State, waiting: list[int]) -> bool:
@@ -437,13 +467,13 @@ class _Task:
         here = self._spread(prepared, state)
         if not bool((here > 0.0).all()):
             return False
-        relative = state.apart / steady.least(state.weights, state.at_hub)
+        relative = state.apart / steady.least(state.weights, float(state.at_hubs[0]))
         if not relative < 0.1 * _WIDEST_STATES:
             return False
         moment = settling.Moment(here, np.zeros(0), relative * _SLACK, 0.0, np.zeros(0), 0.0)
         try:
             if self.shape is None:
-                self.shape = self._shape(prepared.question.grounded.hub)
+                self.shape = self._shape(int(prepared.question.hubs.states[0]))
             low, high, left = settling.fading_between(self.shape, moment)
             if not low > 0.0 or high / low - 1.0 > 4.0 * relative + 1e-11 or left > 0.0:
                 return False
@@ -461,7 +491,7 @@ class _Task:
         """Return the shape that the weights of states settle to, with its decay; without absorption there is none."""
         if self.classes:
             last = max(self.times) * Fraction(self.scale)
-            return shape_of(self.chain, self.loss, self.entry_error, hub, last, "row")
+            return shape_of(self.chain, self.loss, self.loss_error, hub, last, "row")
         grounded = with_likely_hub(self.chain, self.loss, 0.0, hub)
         weights, error = grounded.stationary()
         if error > 1e-20:
@@ -470,9 +500,10 @@ class _Task:
 
     def _spread(self, prepared: Prepared, state: State) -> Floats:
         """Return weights of all states in their own order."""
-        grounded = prepared.question.grounded
+        hubs = prepared.question.hubs
         spread = np.zeros_like(self.start)
-        spread[grounded.order], spread[grounded.hub] = np.maximum(state.weights, 0.0), max(0.0, state.at_hub)
+        spread[hubs.grounded.order] = np.maximum(state.weights, 0.0)
+        spread[hubs.states] = np.maximum(state.at_hubs, 0.0)
         return spread
 
     def _keep(self, prepared: Prepared, number: int, state: State, reason: str) -> None:
@@ -487,6 +518,17 @@ class _Task:
         here, relative = self._spread(prepared, state), math.inf
         if prepared.steady is not None and math.isfinite(state.apart) and bool((here > 0.0).all()):
             steady = prepared.steady
-            relative = state.apart / steady.least(state.weights, state.at_hub)
+            relative = state.apart / steady.least(state.weights, float(state.at_hubs[0]))
             relative = relative / (1.0 - relative) if relative < 0.1 else math.inf
         self.best[number].place(here, relative * _SLACK)
+
+
+def _likelier(hubs: Hubs, weights: Weights, tried: list[list[int]]) -> list[int] | None:
+    """Return other hubs where more time is spent in a state than at the hub that it follows, if there are any."""
+    spent = weights.excursion
+    if not float(spent.max(initial=0.0)) > 4.0:
+        return None
+    place, h = np.unravel_index(int(np.argmax(spent)), spent.shape)
+    other = hubs.states.tolist()
+    other[int(h)] = int(hubs.grounded.order[place])
+    return other if other not in tried else None

@@ -3,15 +3,17 @@
 A `Flow` is the system ``y_j d_j = b_j + sum_i y_i M_ij`` with ``M, b >= 0`` and exit rates d at least the sums over
 the rates that stay inside: an M-matrix ``A = D - M`` with a non-negative inverse.  Whatever solver produced y > 0, let
 
-    |b_j + sum_i y_i M_ij - y_j d_j| <= r y_j d_j                for the EXACT rates, errors of evaluation included.
+    |rho_j| = |b_j + sum_i y_i M_ij - y_j d_j| <= r c_j          for the EXACT rates, errors of evaluation included,
 
-If z satisfies ``z_j d_j >= y_j d_j + sum_i z_i M_ij`` for the exact rates, then, since ``A**-1 >= 0``,
+with r the largest residual over ``y_j d_j``, so that ``c <= y d``.  If z satisfies ``z_j d_j >= c_j + sum_i z_i M_ij``
+for the exact rates, then, since ``A**-1 >= 0``,
 
-    |y - y*| = |rho A**-1| <= r (y d) A**-1 <= r z <= r max(z / y) y.
+    |y - y*| = |rho A**-1| <= r c A**-1 <= r z <= r max(z / y) y.
 
-The residual is evaluated in double-double, so that r may be far below u; z needs no accuracy at all: it is a loose
-solution of ``z A = 2 y d``, and the inequality is verified in floats with outward margins.  ``max(z / y)`` is about
-the number of jumps of an excursion, hence the system must be grounded at a likely state (see `hub`).
+The residual of chains of moderate size is evaluated in double-double, so that r may be far below u; that of large
+ones in floats.  z needs no accuracy at all: it is a loose solution of ``z A = 1.2 c``, and the inequality is verified
+in floats with outward margins.  ``max(z / y)`` is at most about the number of jumps of an excursion, hence the system
+must be grounded at a likely state (see `hub`).
 
 Source: the idea is common in verified linear algebra, see S. M. Rump, Verification methods, Acta Numerica 19 (2010)
 (from memory); the componentwise form with its proof is derived here.
@@ -19,9 +21,10 @@ Source: the idea is common in verified linear algebra, see S. M. Rump, Verificat
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, field
 from functools import cached_property
-from typing import Protocol
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -37,9 +40,12 @@ from markov.chain.doubled import (
     difference,
     multiply,
     plain,
-    total_error,
-    totals,
+    run_blocks,
+    run_error,
+    run_totals,
+    zeros,
 )
+from markov.chain.generator import stretch
 from markov.errors import NotReached
 
 #: A relative bound wider than this is treated as a failure.
@@ -47,6 +53,18 @@ WIDEST = 1e-7
 #: Up to this many transitions the residual is formed in double-double.
 _DOUBLED_RESIDUAL = 3_000_000
 _TINY = 1e-280
+_ALL = slice(None)
+_PIECE = 1 << 16  # states that are worked on together
+_BLOCK = 1 << 15  # transitions that are worked on together in double-double
+#: What the right side of the weights is raised by, with whether a loose solution is tried.
+_RAISED = ((1.2, True), (2.0, False))
+
+
+@dataclass
+class Readings:
+    """How many rates were read from sparse matrices, all products together."""
+
+    entries: int = 0
 
 
 class Solver(Protocol):
@@ -68,23 +86,27 @@ class Flow:
 
     Attributes
     ----------
-    tail, head : int[k]
-        Entry (i, j) of M, sorted by head.
-    rates : Doubled[k]
+    incoming : csr_array[m, m + 1]
+        Transpose of M, rounded to floats: row j holds the rates into j.  States are counted from column 1; column 0
+        is that of the hub, whose weight in this system is 0.
+    bring_low : callable
+        Returns what the rounding left out, float64[k], in the order of ``incoming.data``.
     rate_error : float
-        Relative error of each.
+        Relative error of each rate, both parts taken.
     exits : Doubled[m]
         The d.
     exit_error : float
         Relative error of each.
+    readings : Readings
+        Counts what the products read.
     """
 
-    tail: NDArray[np.int32]
-    head: NDArray[np.int32]
-    rates: Doubled
+    incoming: csr_array
+    bring_low: Callable[[], Floats]
     rate_error: float
     exits: Doubled
     exit_error: float
+    readings: Readings = field(default_factory=Readings)
 
     @property
     def m(self) -> int:
@@ -92,39 +114,82 @@ class Flow:
         return int(self.exits.high.size)
 
     @cached_property
-    def incoming(self) -> csr_array:
-        """Transpose of M in floats: row j holds the rates into j."""
-        pointers = np.concatenate(([0], np.cumsum(np.bincount(self.head, minlength=self.m))))
-        return csr_array((self.rates.high + self.rates.low, self.tail, pointers), shape=(self.m, self.m))
+    def low(self) -> Floats:
+        """Trailing parts of the rates, float64[k]."""
+        return self.bring_low()
 
-    @cached_property
-    def degree(self) -> NDArray[np.int64]:
-        """Number of transitions into each state."""
-        return np.bincount(self.head, minlength=self.m).astype(np.int64)
+    def degree(self, part: slice = _ALL) -> NDArray[np.integer[Any]]:
+        """Return the number of transitions into each state of a stretch, from the hub included."""
+        first, last, _ = part.indices(self.m)
+        return np.diff(self.incoming.indptr[first : last + 1])
+
+    @property
+    def doubled(self) -> bool:
+        """Whether residuals are formed in double-double."""
+        return int(self.incoming.nnz) <= _DOUBLED_RESIDUAL
+
+    def carried(self, y: Floats) -> Floats:
+        """Return ``y M`` in floats; relative error at most ``(degree + 2) u``, rounding the rates included."""
+        self.readings.entries += int(self.incoming.nnz)
+        found: Floats = self.incoming @ np.concatenate(([0.0], y))
+        return found
+
+    def carried_doubled(self, y: Doubled) -> Doubled:
+        """Return ``y M`` for y >= 0 in double-double; relative error at most `carried_error`."""
+        self.readings.entries += int(self.incoming.nnz)
+        pointers, tail = self.incoming.indptr, self.incoming.indices
+        whole = Doubled(np.concatenate(([0.0], y.high)), np.concatenate(([0.0], y.low)))
+        rates, found = Doubled(self.incoming.data, self.low), zeros(self.m)
+        for first, last in run_blocks(pointers, _BLOCK):
+            here = slice(int(pointers[first]), int(pointers[last]))
+            terms = multiply(whole.at(tail[here]), rates.at(here))
+            found.high[first:last], found.low[first:last] = run_totals(terms, pointers[first : last + 1] - here.start)
+        return found
+
+    @property
+    def carried_error(self) -> float:
+        """Relative error of `carried_doubled` against the exact rates."""
+        return run_error(int(self.degree().max(initial=0))) + MULTIPLY + self.rate_error
 
     def residual(self, y: Doubled, b: Doubled, b_error: float) -> tuple[Floats, Floats]:
         """Return ``b + y M - y d`` with a bound of its distance from the exact residual, both float64[m]."""
-        outflow = multiply(y, self.exits)
-        if self.rates.high.size <= _DOUBLED_RESIDUAL:
-            carried = totals(multiply(y.at(self.tail), self.rates), self.head, self.m)
-            inflow = add(b, carried)
+        if self.doubled:
+            outflow = multiply(y, self.exits)
+            inflow = add(b, self.carried_doubled(y))
             rest = difference(inflow, outflow)
-            error = max(b_error, total_error(int(self.degree.max(initial=0))) + MULTIPLY + self.rate_error) + 2 * ADD
+            error = max(b_error, self.carried_error) + 2 * ADD
             margin = inflow.high * error + outflow.high * (MULTIPLY + ADD + self.exit_error)
             value = rest.high + rest.low
             return value, margin * (1.0 + 1e-9) + np.abs(value) * 2 * UNIT + _TINY * 1e-20
-        flat, sent = y.high + y.low, outflow.high + outflow.low
-        received = self.incoming @ flat + (b.high + b.low)
-        value = received - sent
-        margin = received * ((self.degree + 5) * UNIT + max(b_error, self.rate_error))
-        margin += sent * (4 * UNIT + self.exit_error)
-        return value, margin * (1.0 + 1e-9) + _TINY * 1e-20
+        flat = y.high + y.low
+        received = self.carried(flat)
+        received += b.high
+        received += b.low
+        value = flat  # the array is used again
+        for part in _pieces(self.m):
+            coming, going = received[part], flat[part] * self.exits.high[part]
+            value[part] = coming - going
+            # Roundings of y, of a rate and of a product, one per addition, b in two parts; of the exit rate.
+            coming *= (self.degree(part) + 5) * UNIT + max(b_error, self.rate_error)
+            coming += going * (4 * UNIT + self.exit_error)
+            coming *= 1.0 + 1e-9
+            coming += _TINY * 1e-20
+        return value, received
 
     def supersolution(self, z: Floats, c: Floats) -> bool:
         """Whether ``z d >= c + z M`` is certain for the exact rates."""
-        d = (self.exits.high + self.exits.low) * (1.0 - 1e-12 - self.exit_error)
-        margin = 1.0 + (self.degree + 8) * 2 * UNIT + self.rate_error + 1e-12
-        return bool((z * d >= (self.incoming @ z + c) * margin).all() and np.isfinite(z).all())
+        if not bool(np.isfinite(z).all()):
+            return False
+        self.readings.entries += int(self.incoming.nnz)
+        whole = np.concatenate(([0.0], z))
+        for part in _pieces(self.m):
+            needed = stretch(self.incoming, part.start, part.stop) @ whole
+            needed += c[part]
+            d = self.exits.high[part] * (1.0 - 1e-12 - self.exit_error)
+            margin = 1.0 + (self.degree(part) + 8) * 2 * UNIT + self.rate_error + 1e-12
+            if not bool((z[part] * d >= needed * margin).all()):
+                return False
+        return True
 
 
 def solve_certified(flow: Flow, b: Doubled, b_error: float, solver: Solver) -> tuple[Doubled, float]:
@@ -150,56 +215,95 @@ def solve_certified(flow: Flow, b: Doubled, b_error: float, solver: Solver) -> t
     NotReached
         The bound stays above `WIDEST`, or entries underflow.
     """
-    right = b.high + b.low
-    y = plain(np.maximum(solver.solve(right), 0.0))
+    y = _not_negative(solver.solve(b.high + b.low))
     if not bool(np.isfinite(y.high).all()):
         raise NotReached(f"{solver.name}: the solution is not finite")
-    best = _relative_residual(flow, y, b, b_error)
+    rest, margin = flow.residual(y, b, b_error)
+    best = _relative(flow, y, rest, margin)
     for _ in range(4):
-        rest, margin = flow.residual(y, b, b_error)
-        if bool((np.abs(rest) <= 2.0 * margin).all()):
+        if all(bool((np.abs(rest[part]) <= 2.0 * margin[part]).all()) for part in _pieces(flow.m)):
             break
         gain, drop = solver.solve(np.maximum(rest, 0.0)), solver.solve(np.maximum(-rest, 0.0))
         change = gain - drop
-        shifted = add(y, Doubled(change, np.zeros_like(change)))
+        shifted = add(y, plain(change))
         usable = (shifted.high > 0.0) | (y.high == 0.0)
         tried = Doubled(np.where(usable, shifted.high, y.high), np.where(usable, shifted.low, y.low))
-        reached = _relative_residual(flow, tried, b, b_error)
+        after = flow.residual(tried, b, b_error)
+        reached = _relative(flow, tried, *after)
         if not reached < 0.5 * best:
             break
-        y, best = tried, reached
+        y, best, (rest, margin) = tried, reached, after
         if best < 1e-27:
             break
-    values = y.high + y.low
+    values = y.high  # the floats nearest to the sums
     fed = values > 0.0
     if not bool(fed.any()):
-        if bool(right.any()):
+        if bool(b.high.any()):
             raise NotReached(f"{solver.name}: no solution found")
         return y, 0.0
-    if float(values[fed].min()) < _TINY:
-        raise NotReached(f"values down to {values[fed].min():.3g} are too small to be certified")
-    weights = values * (flow.exits.high + flow.exits.low) * (1.0 + 1e-12)
-    for loosely in (True, False):
-        z = np.maximum(solver.solve(2.0 * weights, loosely=loosely), 0.0)
+    least = float(values.min(initial=np.inf, where=fed))
+    if least < _TINY:
+        raise NotReached(f"values down to {least:.3g} are too small to be certified")
+    if not best < WIDEST:
+        raise NotReached(f"{solver.name}: a residual of {best:.2g} is larger than {WIDEST:g}")
+    weights = _weights(flow, values, rest, margin, best)
+    del rest, margin
+    for raised, loosely in _RAISED:
+        weights *= raised
+        z = _not_negative(solver.solve(weights, loosely=loosely)).high
+        weights /= raised
         if flow.supersolution(z, weights):
             break
     else:
         raise NotReached(f"{solver.name}: the weights of the error bound could not be verified")
-    if bool((z[~fed] > 0.0).any()):
+    if bool(((z > 0.0) & ~fed).any()):
         raise NotReached(f"{solver.name}: a state that is fed has no value")
-    growth = float((z[fed] / values[fed]).max()) * (1.0 + 1e-9)
+    growth = max(float((z[part][fed[part]] / values[part][fed[part]]).max(initial=0.0)) for part in _pieces(flow.m))
+    growth *= 1.0 + 1e-9
     error = best * growth
     if not error < WIDEST:
         raise NotReached(f"{solver.name}: the bound of {error:.2g} is wider than {WIDEST:g}")
     return y, error
 
 
-def _relative_residual(flow: Flow, y: Doubled, b: Doubled, b_error: float) -> float:
-    rest, margin = flow.residual(y, b, b_error)
-    scale = (y.high + y.low) * (flow.exits.high + flow.exits.low) * (1.0 - 1e-12 - flow.exit_error)
-    off = np.abs(rest) + margin
-    fed = scale > 0.0
-    # A state that nothing feeds has zero on both sides; the constant against underflow does not count there.
-    if bool((np.abs(rest)[~fed] > 0.0).any()):
-        return float("inf")
-    return float((off[fed] / scale[fed]).max(initial=0.0)) * (1.0 + 1e-9)
+def _not_negative(found: Floats) -> Doubled:
+    """Return what a solver made, without copies where it can be helped; what is not a number stays so."""
+    if bool((found < 0.0).any()):
+        found = np.maximum(found, 0.0)
+    return Doubled(found, np.zeros_like(found))
+
+
+def _relative(flow: Flow, y: Doubled, rest: Floats, margin: Floats) -> float:
+    """Return the largest residual, its margin included, over the flow through the state."""
+    worst = 0.0
+    for part in _pieces(flow.m):
+        scale = (y.high[part] + y.low[part]) * flow.exits.high[part] * (1.0 - 1e-12 - flow.exit_error)
+        off = np.abs(rest[part])
+        fed = scale > 0.0
+        # A state that nothing feeds has zero on both sides; the constant against underflow does not count there.
+        if bool((off[~fed] > 0.0).any()):
+            return float("inf")
+        off += margin[part]
+        worst = max(worst, float((off[fed] / scale[fed]).max(initial=0.0)))
+    return worst * (1.0 + 1e-9)
+
+
+def _weights(flow: Flow, values: Floats, rest: Floats, margin: Floats, best: float) -> Floats:
+    """Return the c of the certificate, at least residual over `best`.
+
+    A thousandth of the flow is kept everywhere, so that nothing underflows; a state that nothing feeds has 0.
+    """
+    weights = rest  # the array is used again
+    for part in _pieces(flow.m):
+        through = values[part] * flow.exits.high[part]
+        if bool((through[values[part] > 0.0] < _TINY * 1e-10).any()):
+            raise NotReached("flows are too small to be certified")
+        # The margin also covers what rounds here and where the weights are raised and lowered again.
+        least = np.maximum((np.abs(rest[part]) + margin[part]) / best, 1e-3 * through) * (1.0 + 1e-9)
+        weights[part] = np.where(through == 0.0, 0.0, least)
+    return weights
+
+
+def _pieces(size: int) -> Iterator[slice]:
+    """Cut an array into pieces, so that what is worked out in between stays small."""
+    return (slice(begin, min(begin + _PIECE, size)) for begin in range(0, size, _PIECE))

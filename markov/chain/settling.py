@@ -40,12 +40,15 @@ from markov.chain.bounds import Floats, above
 from markov.chain.doubled import UNIT, Doubled
 from markov.chain.generator import Generator
 from markov.chain.guard import guard
+from markov.chain.parts import likely_states
 from markov.chain.shape import Shape, shape_of
 from markov.errors import NotReached
 
 _DECIMALS = Context(prec=120)
 #: Ends of the weights' relative spread at which the shape counts as settled.
 _SETTLED = 1e-13
+#: Parts are looked for in chains of up to this many states.
+_SMALL = 25_000
 #: A result wider than this is not returned.
 WIDEST = 1e-6
 
@@ -96,6 +99,13 @@ def follow(
         The shape does not settle within the work that `uniformisation` allows, or the bound stays wide.
     """
     step = uniformisation.jumps(chain, loss)
+    # Parts settle among each other after a few changes; if even one is out of reach there is no use in beginning.
+    between = math.inf
+    if chain.n <= _SMALL:
+        between = likely_states(chain, loss.high + loss.low, int(np.argmax(start))).changing
+    jumps = min(step.rate / between, step.rate * float(max(times)))
+    if jumps * (step.work + 10_000) > uniformisation.MOST_WORK or jumps * step.roundings * UNIT > 0.1 * WIDEST:
+        raise NotReached(f"about {jumps:.2g} expected jumps before a part is left: parts are nearly uncoupled")
     order = sorted(range(len(times)), key=lambda number: times[number])
     found: dict[int, Moment] = {}
     now = Fraction(0)

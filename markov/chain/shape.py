@@ -37,7 +37,6 @@ from markov.chain.doubled import (
     plain,
     total,
     total_error,
-    totals,
 )
 from markov.chain.generator import Generator
 from markov.chain.hub import Hub, with_likely_hub
@@ -158,8 +157,8 @@ def _collatz(hub: Hub, off: Doubled, side: Side) -> tuple[Fraction, Fraction]:
     """Return proven bounds of ``-(y Q)_j / y_j``, or ``-(Q y)_j / y_j``, over all states j; y is 1 at the hub."""
     flow, _ = hub.row if side == "row" else hub.column
     fed, closing = (hub.outward, hub.inward) if side == "row" else (hub.inward, hub.outward)
-    error = flow.rate_error + MULTIPLY + total_error(int(flow.degree.max(initial=0)) + 1) + 2 * ADD + DIVIDE
-    inflow = add(fed, totals(multiply(off.at(flow.tail), flow.rates), flow.head, flow.m))
+    error = max(flow.carried_error, hub.inward_error) + 3 * ADD + DIVIDE
+    inflow = add(fed, flow.carried_doubled(off))
     per = divide(inflow, off)
     rates = difference(flow.exits, per)
     margin = per.high * (error + 2 * ADD) + flow.exits.high * (flow.exit_error + 2 * ADD)

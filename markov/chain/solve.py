@@ -31,9 +31,23 @@ from markov.errors import IllPosed
 _ELIMINATION = "subtraction-free elimination in double-double"
 _STRUCTURE = "by structure"
 Levels = NDArray[np.int64]
+_PIECE = 1 << 16  # states whose shares are worked out together
 
 
-def stationary(generator: Generator, members: ArrayLike | None = None, *, level: ArrayLike | None = None) -> Vector:
+@dataclass(frozen=True, eq=False)
+class LongRun(Vector):
+    """A long-run distribution that tells what it took.
+
+    Attributes
+    ----------
+    readings : float
+        How many times all rates were read from a sparse matrix; 0 where the work was on a dense one.
+    """
+
+    readings: float = 0.0
+
+
+def stationary(generator: Generator, members: ArrayLike | None = None, *, level: ArrayLike | None = None) -> LongRun:
     """Return the long-run distribution of one closed class.
 
     Parameters
@@ -47,7 +61,7 @@ def stationary(generator: Generator, members: ArrayLike | None = None, *, level:
 
     Returns
     -------
-    Vector
+    LongRun
         n probabilities, 0 outside the class, total exactly 1.
 
     Raises
@@ -71,19 +85,24 @@ def stationary(generator: Generator, members: ArrayLike | None = None, *, level:
     values = np.zeros(generator.n)
     if chosen.size == 1:
         values[chosen] = 1.0
-        return Vector(values, 0.0, 0.0, _STRUCTURE, possible, 1.0)
+        return LongRun(values, 0.0, 0.0, _STRUCTURE, possible, 1.0)
     part = generator.restricted(chosen, np.full(generator.n, -1), 0)
+    readings = 0.0
     if chosen.size <= elimination.LARGEST_ELIMINATION:
         made = elimination.eliminate(part.chain.dense(), None, part.chain.rate_error)
         weights, error, method = made.stationary(), made.error, _ELIMINATION
     else:
         hub = with_likely_hub(part.chain, zeros(part.chain.n), 0.0, 0, _levels(level, part))
         weights, error = hub.stationary()
-        method = hub.method
-    share = divide(weights, total(weights))
-    values[chosen] = share.high + share.low
+        method, readings = hub.method, hub.readings.entries / part.chain.source.size
+        del hub  # it holds as much as the chain
+    whole = total(weights)
+    for begin in range(0, chosen.size, _PIECE):
+        here = slice(begin, begin + _PIECE)
+        share = divide(weights.at(here), whole)
+        values[chosen[here]] = share.high + share.low
     relative = 2 * error + total_error(chosen.size) + DIVIDE + UNIT
-    return Vector(values, relative_to_computed(relative), 0.0, method, possible, 1.0)
+    return LongRun(values, relative_to_computed(relative), 0.0, method, possible, 1.0, readings)
 
 
 def long_run(generator: Generator, start: int | Floats | Vector, *, level: ArrayLike | None = None) -> Vector:
@@ -240,11 +259,9 @@ def first_passage(
     """
     first = as_start(start, generator.n)
     goal = as_flags(down, generator.n)
-    stopped = generator.without_exits(goal)
     begin = first.values > 0.0 if first.absolute_error == 0.0 else _support(first)
-    ends = [members for members in stopped.closed_classes(begin) if not goal[members[0]]]
-    hit = bool((stopped.reachable(begin) & goal).any())
-    if not hit:
+    ends = generator.without_exits(goal).closed_classes(begin, outside=goal)
+    if not bool((generator.reachable(begin, blocked=goal) & goal).any()):
         return FirstPassage(point(0, _STRUCTURE), None, None)
     if ends:
         label = np.where(goal, 0, -1)
@@ -332,7 +349,7 @@ class _Absorbing:
         begin = first.values > 0.0 if first.absolute_error == 0.0 else _support(first)
         reached = generator.reachable(begin, blocked=stopped)
         members = np.flatnonzero(reached & ~stopped)
-        saved = generator.without_exits(stopped).reversed().reachable(stopped)
+        saved = generator.leading_to(stopped, blocked=stopped)
         if not bool(saved[members].all()):
             stuck = int(members[~saved[members]][0])
             raise IllPosed(f"from state {stuck}, which can be entered, no absorbing state can be reached")

@@ -15,7 +15,7 @@ method                      where                                               
 Anything else raises NotReached.
 
 `windows` bounds absorption and integrals of rewards, and state probabilities where they have settled; elsewhere its
-state probabilities are an estimate.  It is wide, and says so, where parts of a chain are nearly uncoupled.
+state probabilities are an estimate, as they are where parts of a chain are nearly uncoupled.
 """
 
 from __future__ import annotations

@@ -1,6 +1,7 @@
 """Double-double arithmetic keeps the errors that it states."""
 
 from fractions import Fraction
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -89,6 +90,41 @@ def test_sums_of_lists_stay_within_their_error():
     exact = sum(x.fraction(i) for i in range(3000))
     assert distance(doubled.total(x).fraction(), exact) <= doubled.total_error(3000)
     assert distance(sum(map(Fraction, doubled.exact_total(*x))), exact) <= doubled.W
+
+
+@pytest.mark.parametrize(("longest", "spread"), [(1, 3), (7, 12), (40, 12), (64, 0), (200, 12)])
+def test_sums_of_runs_stay_within_their_error(longest, spread):
+    rng = np.random.default_rng(longest)
+    lengths = rng.integers(0, longest + 1, 300)
+    lengths[5] = longest
+    pointers = np.concatenate(([0], np.cumsum(lengths)))
+    x = numbers(rng, int(pointers[-1]), low=-spread, high=0)
+    summed = doubled.run_totals(x, pointers.astype(np.int32))
+    for run, (begin, end) in enumerate(pairwise(pointers.tolist())):
+        exact = sum((x.fraction(int(i)) for i in range(begin, end)), Fraction(0))
+        assert abs(summed.fraction(run) - exact) <= Fraction(doubled.run_error(longest)) * exact
+        assert abs(summed.low[run]) <= doubled.UNIT * summed.high[run]
+    assert doubled.run_error(64) < 1e-27
+
+
+def test_runs_in_many_blocks_are_those_of_one(monkeypatch):
+    rng = np.random.default_rng(8)
+    pointers = np.concatenate(([0], np.cumsum(rng.integers(0, 9, 500))))
+    x = numbers(rng, int(pointers[-1]))
+    whole = doubled.run_totals(x, pointers)
+    monkeypatch.setattr(doubled, "_RUN_BLOCK", 3)
+    pieces = doubled.run_totals(x, pointers)
+    assert (pieces.high == whole.high).all()
+    assert (pieces.low == whole.low).all()
+    assert [end for _, end in doubled.run_blocks(pointers, 50)][-1] == 500
+
+
+@pytest.mark.parametrize("count", [1, 1000, 2048, 5000])
+def test_a_sum_in_blocks_stays_within_its_error(count, monkeypatch):
+    monkeypatch.setattr(doubled, "_LIST_BLOCK", 16)
+    x = numbers(np.random.default_rng(count), count)
+    exact = sum(x.fraction(i) for i in range(count))
+    assert distance(doubled.total(x).fraction(), exact) <= doubled.total_error(count)
 
 
 def test_products_that_underflow_are_off_by_the_stated_amount():
