@@ -13,7 +13,7 @@ Timing = Literal["point", "steady", "either", "none"]
 LimitKind = Literal["share", "time", "rate", "number"]
 
 #: Which subjects (`of`) a measure may have besides the system.
-Subject = Literal["group", "unit", "crew"]
+Subject = Literal["group", "unit", "crew", "level"]
 
 _UP_DOWN: tuple[Subject, ...] = ("group", "unit")
 
@@ -74,7 +74,6 @@ MEASURES: dict[str, Measure] = _table(
         "1/y",
         "number",
         True,
-        needs="demand",
     ),
     Measure(
         "spurious_failures_per_year",
@@ -83,14 +82,13 @@ MEASURES: dict[str, Measure] = _table(
         "1/y",
         "number",
         True,
-        needs="failure_modes",
     ),
     Measure(
         "repairs_per_year", "completed repairs per year", "steady", "1/y", "number", True, ("group", "unit", "crew")
     ),
     Measure("starts_per_year", "start attempts per year", "steady", "1/y", "number", True),
-    Measure("spares_per_year", "spares used per year", "steady", "1/y", "number", True, needs="spares"),
-    Measure("tests_per_year", "tests per year", "steady", "1/y", "number", True, needs="tests"),
+    Measure("spares_per_year", "spares used per year", "steady", "1/y", "number", True),
+    Measure("tests_per_year", "tests per year", "steady", "1/y", "number", True),
     Measure("crew_utilisation", "mean share of the crews at work", "steady", "1", "share", True, ("crew",)),
     Measure("waiting_for_crew", "mean number of units waiting for a crew", "steady", "1", "number", True, ("crew",)),
     Measure(
@@ -98,6 +96,15 @@ MEASURES: dict[str, Measure] = _table(
     ),
     Measure("mean_units_failed", "mean number of failed units", "either", "1", "number", True),
     Measure("mean_capacity", "expected delivered share", "either", "1", "share", False),
+    Measure(
+        "level_probability",
+        "probability that at least the share of the level `of` is delivered",
+        "either",
+        "1",
+        "share",
+        False,
+        ("level",),
+    ),
     Measure(
         "time_without_redundancy",
         "time per year up while one further unit fault would bring the system down",

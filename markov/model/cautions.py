@@ -2,23 +2,42 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
+from dataclasses import fields, is_dataclass
 from fractions import Fraction
 
 from markov.model.content import Content
+from markov.model.durations import shape_of
 from markov.model.faults import choices, quote
+from markov.model.hiding import hiding_cautions
+from markov.model.idle import idle_cautions
+from markov.model.part import Part
 from markov.model.units import Unit
 from markov.quantities import Quantity
 
 #: Two values closer than this, relative, and not equal, are called nearly alike.
 NEARLY = Fraction(1, 100)
+#: More stages than this for one time are noted.
+MANY_STAGES = 50
 _MOST_COMPARED = 200
 _PLAUSIBLE_YEAR = (Fraction(8000), Fraction(9000))
 
 
 def cautions(content: Content) -> tuple[str, ...]:
     """Return all cautions about a spec that is in order, each as one sentence."""
-    rules = (_years, _parameters, _rates, _alike, _unused, _groups, _crews, _targets)
+    rules = (
+        _years,
+        _parameters,
+        _rates,
+        _spreads,
+        _alike,
+        _unused,
+        _crew_sizes,
+        hiding_cautions,
+        idle_cautions,
+        _phases,
+        _targets,
+    )
     return tuple(dict.fromkeys(text for rule in rules for text in rule(content)))
 
 
@@ -28,35 +47,28 @@ def _years(content: Content) -> Iterator[str]:
         yield f"year: {content.year.text} is far from 8760 h."
 
 
-def _quantities(content: Content) -> Iterator[tuple[str, Quantity]]:
+def _quantities(value: object, place: str = "") -> Iterator[tuple[str, Quantity]]:
     """Yield every quantity of a spec outside of `parameters`, with its place."""
-    for name, unit in content.units.items():
-        for key in type(unit).model_fields:
-            value = getattr(unit, key)
-            if isinstance(value, Quantity):
-                yield f"units.{name}.{key}", value
-    for name, group in content.groups.items():
-        for position, share in enumerate(group.coverage_list, start=1):
-            yield f"groups.{name}, coverage {position}", share
-        for key, each in (
-            ("dormancy_factor", group.dormancy_factor),
-            ("switchover.time", group.takeover_time),
-            ("switchover.uncovered.time", group.outcome_time),
-        ):
-            if each is not None:
-                yield f"groups.{name}.{key}", each
-    for name, state in content.states.items():
-        if state.capacity is not None:
-            yield f"states.{name}.capacity", state.capacity
-    for number, transition in enumerate(content.transitions, start=1):
-        yield f"transitions#{number}", transition.given
-    if content.mission is not None:
-        yield "mission.time", content.mission.time
-    for target in content.targets:
-        for key in ("at", "for_", "at_least", "at_most"):
-            value = getattr(target, key)
-            if isinstance(value, Quantity):
-                yield f"target {target.id}", value
+    spread = shape_of(value) if isinstance(value, Quantity) else None
+    if spread is not None and spread.standard_deviation is not None:
+        yield f"{place}.standard_deviation", spread.standard_deviation
+    entries: Iterator[tuple[str, object]]
+    match value:
+        case Quantity():
+            yield place, value
+            return
+        case Part():
+            entries = ((key, getattr(value, key)) for key in type(value).model_fields if key != "parameters")
+        case Mapping():
+            entries = ((str(key), each) for key, each in value.items())
+        case tuple():
+            entries = ((str(number), each) for number, each in enumerate(value, start=1))
+        case _ if is_dataclass(value):
+            entries = ((each.name, getattr(value, each.name)) for each in fields(value))
+        case _:
+            return
+    for key, each in entries:
+        yield from _quantities(each, f"{place}.{key}" if place else key)
 
 
 def _parameters(content: Content) -> Iterator[str]:
@@ -86,14 +98,35 @@ def _rates(content: Content) -> Iterator[str]:
             yield f"units.{name}: a failure rate of zero, it never fails."
         if unit.repair_rate is not None and unit.repair_rate.is_zero:
             yield f"units.{name}: a repair rate of zero, it is never repaired."
-        if unit.repaired_at_once and (unit.repair_stages > 1):
-            yield f"units.{name}: `repair_stages` has no effect on a repair that takes no time."
+        for mode in unit.modes():
+            if not mode.occurs:
+                yield f"units.{name}: the failure mode {quote(mode.name)} has a share of zero, it never occurs."
+    for name, group in content.groups.items():
+        switch = group.switch
+        for key in ("failure_rate", "false_operation_rate"):
+            rate = getattr(switch, key) if switch is not None else None
+            if rate is not None and rate.is_zero:
+                yield f"groups.{name}.switchover.switch: a `{key}` of zero, it never happens."
+    if content.demand is not None and content.demand.rate.is_zero:
+        yield "demand: a rate of zero, it never comes."
+    for number, phase in enumerate(content.phases, start=1):
+        for name, factor in phase.rate_factors.items():
+            if factor.is_zero:
+                yield f"phases#{number} {quote(phase.name)}: a factor of zero, {quote(name)} never fails in it."
     for number, transition in enumerate(content.transitions, start=1):
         if transition.hourly == 0:
             yield (
                 f"transitions#{number} from {quote(transition.source)} to {quote(transition.target)}: "
                 "a rate of zero, it never happens."
             )
+
+
+def _spreads(content: Content) -> Iterator[str]:
+    """Name times whose spread needs so many stages that the chain grows by them."""
+    for place, quantity in _quantities(content):
+        spread = shape_of(quantity)
+        if spread is not None and spread.least_stages > MANY_STAGES:
+            yield f"{place}: {spread.least_stages} stages stand in for it, and the chain grows by each of them."
 
 
 def _alike(content: Content) -> Iterator[str]:
@@ -113,16 +146,12 @@ def _alike(content: Content) -> Iterator[str]:
 
 
 def _nearly(one: Unit, other: Unit) -> bool:
-    if (one.repairable, one.repaired_at_once, one.repair_stages) != (
-        other.repairable,
-        other.repaired_at_once,
-        other.repair_stages,
-    ):
+    if _character(one) != _character(other):
         return False
     pairs = [(one.failure_hourly, other.failure_hourly)]
     if one.repairable and not one.repaired_at_once:
         pairs.append((one.repair_hourly, other.repair_hourly))
-    for key in ("logistic_delay", "start_failure", "capacity"):
+    for key in ("logistic_delay", "start_failure", "capacity", "detected", "repair_success"):
         first, second = getattr(one, key), getattr(other, key)
         if (first is None) != (second is None):
             return False
@@ -132,10 +161,23 @@ def _nearly(one: Unit, other: Unit) -> bool:
     return close and any(first != second for first, second in pairs)
 
 
+def _character(unit: Unit) -> tuple[object, ...]:
+    """Return what has to be the same in two units for their numbers to be compared."""
+    return (
+        unit.repairable,
+        unit.repaired_at_once,
+        unit.repair_stages,
+        unit.repair_time_shape,
+        unit.logistic_delay_shape,
+        unit.failure_modes,
+        frozenset(unit.revealed_by),
+    )
+
+
 def _unused(content: Content) -> Iterator[str]:
     if content.explicit:
         return
-    in_system = set(content.named_in_system)
+    in_system = set(content.named_in_any_phase)
     pending = [name for name in in_system if name in content.groups]
     while pending:
         for member in content.groups[pending.pop()].members:
@@ -143,44 +185,26 @@ def _unused(content: Content) -> Iterator[str]:
                 in_system.add(member.name)
                 if member.name in content.groups:
                     pending.append(member.name)
-    pooled = {unit: name for name, crew in content.crews.items() for unit in crew.repairs}
+    pooled = {unit: f"loads the crew {quote(name)}" for name, crew in content.crews.items() for unit in crew.repairs}
+    for name, pool in content.spares.items():
+        for unit in pool.for_:
+            pooled.setdefault(unit, f"draws spares from {quote(name)}")
     grouped = {place.unit for place in content.placements if place.group is not None}
     for name, group in content.groups.items():
         if name not in in_system:
             loads = any(member.name in pooled for member in group.members)
-            why = "it only loads a crew" if loads else "it changes no measure of the system"
+            why = "it only loads a crew or draws spares" if loads else "it changes no measure of the system"
             yield f"groups.{name} is outside of `system`: {why}."
     for name in content.units:
         if name in in_system or name in grouped:
             continue
         if name in pooled:
-            yield f"units.{name} is outside of `system`: it only loads the crew {quote(pooled[name])}."
+            yield f"units.{name} is outside of `system`: it only {pooled[name]}."
         else:
             yield f"units.{name}: nothing uses this unit."
 
 
-def _groups(content: Content) -> Iterator[str]:
-    for name, group in content.groups.items():
-        place = f"groups.{name}"
-        covered = group.coverage_list
-        if covered and group.size == (group.required if group.is_active else group.duty_places):
-            yield f"{place}: `coverage` has no effect, there is no redundancy that a covered fault could use."
-        elif len(covered) > max(group.size - 1, 1):
-            yield f"{place}: of {len(covered)} coverages only the first {group.size - 1} can ever apply."
-        if not group.is_active and group.size == group.duty_places:
-            yield f"{place}: `{group.redundancy}`, and all {group.size} members are on duty: none ever waits at first."
-        if group.takeover_stages > 1 and (group.takeover_time is None or group.takeover_time.is_zero):
-            yield f"{place}: `switchover.stages` has no effect without a `time`."
-        if group.is_active:
-            for key, written in (
-                ("return_to_preferred", group.return_to_preferred),
-                ("after_repair", group.after_repair == "start_again"),
-            ):
-                if written:
-                    yield f"{place}: `{key}` has no effect in an active group, where all good members carry duty."
-
-
-def _crews(content: Content) -> Iterator[str]:
+def _crew_sizes(content: Content) -> Iterator[str]:
     items: dict[str, int] = {}
     for place in content.placements:
         items[place.unit] = items.get(place.unit, 0) + place.count
@@ -188,9 +212,19 @@ def _crews(content: Content) -> Iterator[str]:
         served = sum(items.get(unit, 0) for unit in crew.repairs)
         if crew.size > served:
             yield f"crews.{name}: a size of {crew.size} for {served} unit{'' if served == 1 else 's'}."
-        idle = [unit for unit in crew.repairs if not content.units[unit].repairable]
-        if idle:
-            yield f"crews.{name}: {choices(idle, 'and')} never repaired, the crew is not called for it."
+
+
+def _phases(content: Content) -> Iterator[str]:
+    """Name phases that the mission never enters."""
+    if content.mission is None:
+        return
+    begin = Fraction(0)
+    for phase in content.phases:
+        if begin > 0 and begin >= content.mission.time.exact:
+            yield f"phases: the mission of {content.mission.time.text} ends before {quote(phase.name)} begins."
+        if phase.duration is None:
+            return
+        begin += phase.duration.exact
 
 
 def _targets(content: Content) -> Iterator[str]:
@@ -201,5 +235,8 @@ def _targets(content: Content) -> Iterator[str]:
                 f"target {target.id}: `{target.direction}` on {quote(target.measure)}, where {good} is good: "
                 "check the direction."
             )
+        acting = any(unit.may_act_needlessly for unit in content.units.values())
+        if target.measure == "spurious_failures_per_year" and not acting:
+            yield f"target {target.id}: no failure mode acts needlessly, so it is 0."
     if content.mission is None:
         yield "No `mission`: measures that need a time are given only for times that are asked."

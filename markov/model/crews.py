@@ -17,7 +17,6 @@ class Crew(Part):
 
     kind = "crew pool"
     example = "{size: 1, repairs: [pump, valve]}"
-    unbuilt_values: ClassVar[Mapping[str, Collection[str]]] = {"queue": ("first_come",)}
     habits: ClassVar[Mapping[str, str]] = {
         "count": "write `size`",
         "number": "write `size`",
@@ -36,19 +35,14 @@ class Crew(Part):
         json_schema_extra={"unsaid": "the order of `repairs`"},
     )
     preemptive: Flag = Field(
-        True,
-        description="Whether a more urgent unit interrupts a repair, to be resumed in its stage; `false` is not built "
-        "yet.",
+        True, description="Whether a more urgent unit interrupts a repair, to be resumed in its stage."
     )
-    queue: Literal["priority"] = Field(
-        "priority", description="Who is next: by `priority`. (`first_come` is not built yet.)"
+    queue: Literal["priority", "first_come"] = Field(
+        "priority",
+        description="Who is next: `priority`, the most urgent unit; `first_come`, the one that waits longest.",
     )
 
     def _faults(self, unread: Collection[str]) -> Iterable[Fault]:
-        if not self.preemptive:
-            yield Fault(
-                ("preemptive",), "`preemptive: false` is not built yet", "`preemptive: true`", "use what is built"
-            )
         if not self.repairs:
             yield Fault(("repairs",), "an empty list", "at least one unit", "write `repairs: [NAME]`")
         yield from self._repeated("repairs", self.repairs)

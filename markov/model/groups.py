@@ -3,73 +3,22 @@
 from __future__ import annotations
 
 from collections.abc import Collection, Iterable, Mapping
-from dataclasses import dataclass
 from fractions import Fraction
-from typing import Annotated, Any, ClassVar, Literal
+from typing import ClassVar, Literal
 
 from pydantic import Field, PrivateAttr, ValidationInfo, model_validator
-from pydantic_core import PydanticCustomError
 
-from markov.model.faults import Fault, Path, choices, quote, raise_all
+from markov.model.deferral import AT_ONCE, RepairAtFailed, RepairWhen
+from markov.model.durations import TimeShape
+from markov.model.faults import Fault, Path, quote
+from markov.model.loads import MaybeLoadSharing
 from markov.model.part import Part, at_most_one
-from markov.model.readers import (
-    Context,
-    Count,
-    Flag,
-    KeyName,
-    MaybeCount,
-    MaybeShare,
-    MaybeTime,
-    MaybeTimeAboveZero,
-    Reader,
-    Reads,
-    context_of,
-)
+from markov.model.readers import Count, Flag, KeyName, MaybeCount, MaybeShare, context_of
+from markov.model.switchovers import Coverage, Outcome, Switch, Switchover
 from markov.quantities import Quantity
 
 Redundancy = Literal["active", "hot_standby", "warm_standby", "cold_standby"]
-Outcome = Literal["until_repair", "manual_takeover", "restart", "restart_without_failed", "all_failed", "lost"]
 WhileDown = Literal["continue", "standby_rate", "stop"]
-
-#: Outcomes of an uncovered fault that end after a mean time of their own.
-TIMED_OUTCOMES: tuple[Outcome, ...] = ("manual_takeover", "restart", "restart_without_failed")
-
-
-@dataclass(frozen=True)
-class ReadsCoverage(Reader):
-    """Reads one share, or a list of them: one for each number of units failed before."""
-
-    label: ClassVar[str] = "share, or list of shares"
-
-    def json_schema(self) -> dict[str, Any]:
-        """See `Reader`."""
-        share = Reads("share").json_schema()
-        return {"anyOf": [share, {"type": "array", "items": share, "minItems": 1}]}
-
-    def read(self, value: object, context: Context, key: str) -> tuple[Quantity, ...]:
-        """See `Reader`."""
-        one = Reads("share")
-        if not isinstance(value, list | tuple):
-            return (one.read(value, context, key),)
-        shares: list[Quantity] = []
-        faults: list[Fault] = []
-        silent: list[Path] = []
-        for position, each in enumerate(value):
-            try:
-                shares.append(one.read(each, context, key))
-            except PydanticCustomError as error:
-                told = error.context
-                if told:
-                    faults.append(Fault((position,), told["found"], told["expected"], told["fix"]))
-                else:
-                    silent.append((position,))
-        if not value:
-            faults.append(Fault((), "an empty list", "at least one share", "write one, or take the key out"))
-        raise_all(faults, silent)
-        return tuple(shares)
-
-
-Coverage = Annotated[tuple[Quantity, ...] | None, ReadsCoverage()]
 
 
 class Member(Part):
@@ -102,81 +51,11 @@ class Member(Part):
         return self._is_group
 
 
-class Uncovered(Part):
-    """What an uncovered fault leads to."""
-
-    kind = "uncovered fault"
-    example = "{outcome: manual_takeover, time: 0.75 h}"
-    habits: ClassVar[Mapping[str, str]] = {"mean_time": "write `time`", "duration": "write `time`"}
-
-    outcome: Outcome = Field(
-        description="`until_repair`: out until a repair leaves enough good units; `manual_takeover`: someone starts "
-        "standbys after `time`; `restart`: all good again after `time`; `restart_without_failed`: the good ones are "
-        "back after `time`; `all_failed`: the healthy units fail too; `lost`: down for good."
-    )
-    time: MaybeTimeAboveZero = Field(
-        None, description=f"Mean time; needed for {choices(TIMED_OUTCOMES, 'and')}, refused otherwise."
-    )
-
-    def _faults(self, unread: Collection[str]) -> Iterable[Fault]:
-        timed = self.outcome in TIMED_OUTCOMES
-        if timed and self.time is None and "time" not in unread:
-            yield Fault(
-                (),
-                "`time` is missing",
-                f"a mean time for {quote(self.outcome)}",
-                "add `time: …`",
-                on_key=True,
-            )
-        if not timed and self.time is not None:
-            yield Fault(
-                ("time",),
-                f"{quote(self.outcome)} with a `time`",
-                f"`time` with {choices(TIMED_OUTCOMES)} only",
-                "remove it, or choose another outcome",
-                on_key=True,
-            )
-
-
-class Switchover(Part):
-    """How duty passes to a standby."""
-
-    kind = "switchover"
-    example = "{coverage: 98 %, time: 20 s}"
-    unbuilt: ClassVar[Mapping[str, str]] = {"switch": "switches that fail themselves"}
-    habits: ClassVar[Mapping[str, str]] = {
-        "mean_time": "write `time`",
-        "duration": "write `time`",
-        "outcome": "write `uncovered: {outcome: …}`",
-        "probability": "write `coverage`",
-    }
-
-    coverage: Coverage = Field(
-        None,
-        description="Chance that a detected duty fault is covered; in a list, entry i applies when i − 1 units of the "
-        "group are failed before the fault, and the last entry repeats.",
-        json_schema_extra={"unsaid": "`1`"},
-    )
-    time: MaybeTime = Field(
-        None,
-        description="Mean time of a takeover, the place being empty meanwhile.",
-        json_schema_extra={"unsaid": "`0 h`"},
-    )
-    stages: Count = Field(1, description="Stages of equal mean that `time` passes.")
-    uncovered: Uncovered | None = Field(
-        None,
-        description="What an uncovered fault leads to.",
-        json_schema_extra={"unsaid": "`{outcome: until_repair}`"},
-    )
-
-
 class Group(Part):
     """Units that stand in for each other."""
 
     kind = "group"
     example = "{members: [{unit: pump, count: 2}], required: 1, redundancy: cold_standby}"
-    unbuilt: ClassVar[Mapping[str, str]] = {"load_sharing": "load sharing"}
-    unbuilt_values: ClassVar[Mapping[str, Collection[str]]] = {"repair_when": ("system_down",)}
     habits: ClassVar[Mapping[str, str]] = {
         "k": "write `required`",
         "needed": "write `required`",
@@ -192,6 +71,9 @@ class Group(Part):
         "uncovered": "write `switchover: {uncovered: …}`",
         "switchover_time": "write `switchover: {time: …}`",
         "failover": "write `switchover`",
+        "switch": "write `switchover: {switch: …}`",
+        "load": "write `load_sharing`",
+        "deferred_repair": "write `repair_when`",
     }
 
     members: tuple[Member, ...] = Field(
@@ -227,7 +109,20 @@ class Group(Part):
         description="`straight_to_duty`: a repaired unit fills an empty place without a start attempt; "
         "`start_again`: it joins the standbys and has to start.",
     )
-    repair_when: Literal["at_once"] = Field("at_once", description="When repair of a failed unit begins.")
+    load_sharing: MaybeLoadSharing = Field(
+        None,
+        description="Factor on the failure rate of a unit on duty by the number of units on duty: `{2: 1, 1: 1.8}`, or "
+        "`{exponent: a}` for (`on_duty` ÷ units on duty) to the power a.",
+        json_schema_extra={"unsaid": "the rate is the same whatever the number"},
+    )
+    repair_when: RepairWhen = Field(
+        AT_ONCE,
+        description="When repair of failed units begins: `at_once`, `system_down`, `{failed: k}` once k units of the "
+        "group are known to be failed, `{visits_every: time}` at fixed instants.",
+    )
+    offline_repair: Flag = Field(
+        False, description="Whether the whole group stops while a crew is at work on one of its units."
+    )
     while_down: WhileDown | None = Field(
         None,
         description="What the group's units do while the system is down: `continue` to fail at their present rate, "
@@ -242,6 +137,8 @@ class Group(Part):
     def _faults(self, unread: Collection[str]) -> Iterable[Fault]:
         yield from self._member_faults()
         yield from self._number_faults()
+        if not {"members", "required", "on_duty", "redundancy", "repair_when"} & set(unread):
+            yield from self._deferral_faults()
         if not {"required", "on_duty", "redundancy", "dormancy_factor"} & set(unread):
             yield from self._redundancy_faults()
 
@@ -279,6 +176,12 @@ class Group(Part):
                 "all good members on duty, as `active` says",
                 "remove `on_duty`, or choose a standby",
             )
+
+    def _deferral_faults(self) -> Iterable[Fault]:
+        when = self.repair_when
+        if isinstance(when, RepairAtFailed) and when.failed > self.size > 0:
+            found = f"repair once {when.failed} of {self.size} units are failed"
+            yield Fault(("repair_when", "failed"), found, "at most the number of members", "lower it")
 
     def _redundancy_faults(self) -> Iterable[Fault]:
         places = self.required if self.on_duty is None else self.on_duty
@@ -328,6 +231,12 @@ class Group(Part):
             return self.size
         return self.required if self.on_duty is None else self.on_duty
 
+    def places_for(self, required: int) -> int:
+        """Return how many units carry duty in a phase that requires so many."""
+        if self.redundancy == "active":
+            return self.size
+        return required if self.on_duty is None else self.on_duty
+
     @property
     def is_active(self) -> bool:
         """Whether all good members carry duty."""
@@ -371,3 +280,25 @@ class Group(Part):
     def takeover_stages(self) -> int:
         """Stages of a takeover."""
         return 1 if self.switchover is None else self.switchover.stages
+
+    @property
+    def takeover_shape(self) -> TimeShape | None:
+        """Law of the takeover time where it has a spread."""
+        return None if self.switchover is None else self.switchover.time_shape
+
+    @property
+    def outcome_shape(self) -> TimeShape | None:
+        """Law of the time of the outcome where it has a spread."""
+        if self.switchover is None or self.switchover.uncovered is None:
+            return None
+        return self.switchover.uncovered.time_shape
+
+    @property
+    def switch(self) -> Switch | None:
+        """The switch of the group, where it has faults of its own."""
+        return None if self.switchover is None else self.switchover.switch
+
+    @property
+    def is_deferred(self) -> bool:
+        """Whether repair waits for something after a fault."""
+        return self.repair_when != "at_once"

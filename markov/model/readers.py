@@ -11,9 +11,9 @@ from numbers import Integral, Real
 from typing import Annotated, Any, ClassVar, Literal, NoReturn
 
 from pydantic import GetCoreSchemaHandler, GetJsonSchemaHandler
-from pydantic_core import CoreSchema, core_schema
+from pydantic_core import CoreSchema, PydanticCustomError, core_schema
 
-from markov.model.faults import nearest, quote, refuse, refuse_silently
+from markov.model.faults import Fault, Path, nearest, quote, raise_all, refuse, refuse_silently
 from markov.quantities import COMMON_YEAR, Dimension, Quantity, QuantityError, parse_expression, parse_quantity
 from markov.quantities import names as names_in
 
@@ -321,22 +321,65 @@ class ReadsName(Reader):
         return text
 
 
+@dataclass(frozen=True)
+class ReadsNames(Reader):
+    """Reads names in a list, or one name alone."""
+
+    label: ClassVar[str] = "name, or list of names"
+
+    def json_schema(self) -> dict[str, Any]:
+        """See `Reader`."""
+        name = ReadsName().json_schema()
+        return {"anyOf": [name, {"type": "array", "items": name, "minItems": 1}]}
+
+    def read(self, value: object, context: Context, key: str) -> tuple[str, ...]:
+        """See `Reader`."""
+        if not isinstance(value, list | tuple):
+            return (ReadsName().read(value, context, key),)
+        read: tuple[str, ...] = read_each(ReadsName(), value, context, key, "one name")
+        return read
+
+
+def read_each(reader: Reader, values: list[Any] | tuple[Any, ...], context: Context, key: str, least: str) -> Any:
+    """Read the entries of a list, all their faults at once; `least` says what an empty list lacks."""
+    good: list[Any] = []
+    faults: list[Fault] = []
+    silent: list[Path] = []
+    for position, each in enumerate(values):
+        try:
+            good.append(reader.read(each, context, key))
+        except PydanticCustomError as error:
+            told = error.context
+            if told:
+                faults.append(Fault((position,), told["found"], told["expected"], told["fix"]))
+            else:
+                silent.append((position,))
+    if not values:
+        faults.append(Fault((), "an empty list", f"at least {least}", "write one, or take the key out"))
+    raise_all(faults, silent)
+    return tuple(good)
+
+
 Time = Annotated[Quantity, Reads("time")]
 TimeAboveZero = Annotated[Quantity, Reads("time", above_zero=True)]
 HourlyRate = Annotated[Quantity, Reads("rate")]
 Share = Annotated[Quantity, Reads("share")]
+ShareAboveZero = Annotated[Quantity, Reads("share", above_zero=True)]
+Number = Annotated[Quantity, Reads("number")]
 AnyQuantity = Annotated[Quantity, Reads("any")]
 Count = Annotated[int, ReadsCount()]
 CountFromZero = Annotated[int, ReadsCount(0)]
 Flag = Annotated[bool, ReadsFlag()]
 Text = Annotated[str, ReadsText()]
 KeyName = Annotated[str, ReadsName()]
+Names = Annotated[tuple[str, ...], ReadsNames()]
 
 # Keys that may be left out.  The annotation stands around the whole union, so that a written `null` is refused.
 MaybeTime = Annotated[Quantity | None, Reads("time")]
 MaybeTimeAboveZero = Annotated[Quantity | None, Reads("time", above_zero=True)]
 MaybeRate = Annotated[Quantity | None, Reads("rate")]
 MaybeShare = Annotated[Quantity | None, Reads("share")]
+MaybeNumber = Annotated[Quantity | None, Reads("number")]
 MaybeCount = Annotated[int | None, ReadsCount()]
 MaybeText = Annotated[str | None, ReadsText()]
 MaybeName = Annotated[str | None, ReadsName()]

@@ -14,15 +14,28 @@ from pydantic import ValidationError
 from markov.model.content import Content
 from markov.model.faults import Fault, Path, gathered, quote
 from markov.model.parameters import resolve
+from markov.model.partial import Partial
 from markov.model.readers import Context, as_text
-from markov.model.references import Partial, check
+from markov.model.references import check
 from markov.quantities import COMMON_YEAR, Quantity, QuantityError, parse_quantity
 
 #: Deepest nesting of mappings and lists that is read.
 DEEPEST = 60
 
-_KEYED = ("parameters", "units", "groups", "crews", "initial", "states", "reference")
-_LISTED = ("targets", "transitions")
+_KEYED = (
+    "parameters",
+    "units",
+    "groups",
+    "crews",
+    "spares",
+    "tests",
+    "common_causes",
+    "initial",
+    "levels",
+    "states",
+    "reference",
+)
+_LISTED = ("phases", "targets", "transitions")
 _ROUNDS = 4
 
 

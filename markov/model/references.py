@@ -2,65 +2,33 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterable, Iterator, Mapping
-from dataclasses import dataclass, field
-from typing import Any
+from collections.abc import Collection, Iterable, Iterator
 
 from markov.measures import Subject
 from markov.model.circles import ordered
-from markov.model.content import Content
-from markov.model.faults import Fault, Path, choices, quote, suggest
+from markov.model.faults import Fault, Path, choices, quote
+from markov.model.partial import Partial, unknown
+from markov.model.schedules import schedule_faults
+from markov.model.stocking import stock_faults
+from markov.model.striking import cause_faults
 from markov.model.success import places
 from markov.model.targets import Target
+from markov.model.unbuilt import unbuilt_faults
 
-_GENERATED = ("units", "groups", "crews", "system", "while_down", "initial")
-
-
-@dataclass(frozen=True)
-class Partial:
-    """The parts of a spec that could be read, beside all that is written.
-
-    Attributes
-    ----------
-    content : Content
-        Faulty parts are left out.
-    raw : mapping
-        As written.
-    kept : mapping of key to list of int
-        For lists with faulty entries: the positions, as written, of the entries that are left.
-    """
-
-    content: Content
-    raw: Mapping[str, Any]
-    kept: Mapping[str, list[int]] = field(default_factory=dict)
-
-    def position(self, key: str, index: int) -> int:
-        """Return where an entry of a list stands as written."""
-        return self.kept[key][index] if key in self.kept else index
-
-    def names(self, key: str) -> frozenset[str]:
-        """Return all names written under a key, faulty or not."""
-        written = self.raw.get(key)
-        return frozenset(written) if isinstance(written, Mapping) else frozenset()
-
-    def is_said(self, key: str) -> bool:
-        """Whether a top key is written, be it misspelt."""
-        return key in self.raw or key in self.content.meant_by(self.raw).values()
-
-    def is_readable(self, key: str) -> bool:
-        """Whether names under a key are known: it is absent, or a mapping."""
-        return key not in self.raw or isinstance(self.raw[key], Mapping)
-
-    def is_whole(self, *keys: str) -> bool:
-        """Whether no part under these keys was faulty."""
-        for key in keys:
-            written = self.raw.get(key)
-            read = getattr(self.content, key)
-            if written is not None and (read is None or (isinstance(written, Mapping | list) and not read and written)):
-                return False
-            if isinstance(written, Mapping) and isinstance(read, Mapping) and len(written) != len(read):
-                return False
-        return True
+_GENERATED = (
+    "units",
+    "groups",
+    "crews",
+    "spares",
+    "tests",
+    "common_causes",
+    "demand",
+    "phases",
+    "system",
+    "while_down",
+    "restoration",
+    "initial",
+)
 
 
 def check(partial: Partial) -> list[Fault]:
@@ -103,7 +71,7 @@ def _transition_faults(partial: Partial) -> Iterator[Fault]:
         at = partial.position("transitions", index)
         for key, name in (("from", transition.source), ("to", transition.target)):
             if name not in known:
-                yield _unknown(("transitions", at, key), name, known, "a state of `states`")
+                yield unknown(("transitions", at, key), name, known, "a state of `states`")
 
 
 # ------------------------------------------------------------------------------------------------------- plants
@@ -134,12 +102,12 @@ def _name_faults(partial: Partial) -> Iterator[Fault]:
 
 def _member_faults(partial: Partial) -> Iterator[Fault]:
     units, groups = partial.names("units"), partial.names("groups")
+    known = units | groups
     inside: dict[str, str] = {}
-    for name, position, member in _listed(partial, "groups", "members"):
-        path: Path = ("groups", name, "members", position)
-        if member not in units | groups:
+    for name, path, member in partial.listed("groups", "members"):
+        if member not in known:
             if partial.is_readable("units"):
-                yield _unknown(path, member, units | groups, "a unit of `units` or a group")
+                yield unknown(path, member, known, "a unit of `units` or a group")
         elif member not in units and inside.setdefault(member, name) != name:
             found = f"the group {quote(member)} is a member of {quote(inside[member])}, too"
             yield Fault(path, found, "a group is a member once", "write a second group of the same units")
@@ -156,26 +124,14 @@ def _member_faults(partial: Partial) -> Iterator[Fault]:
 def _crew_faults(partial: Partial) -> Iterator[Fault]:
     units, groups = partial.names("units"), partial.names("groups")
     pools: dict[str, str] = {}
-    for name, position, unit in _listed(partial, "crews", "repairs"):
-        path: Path = ("crews", name, "repairs", position)
+    for name, path, unit in partial.listed("crews", "repairs"):
         if unit in groups and unit not in units:
             yield Fault(path, f"{quote(unit)} is a group", "units", "name the units of the group")
         elif unit not in units and partial.is_readable("units"):
-            yield _unknown(path, unit, units, "a unit of `units`")
+            yield unknown(path, unit, units, "a unit of `units`")
         elif pools.setdefault(unit, name) != name:
             found = f"{quote(unit)} is repaired by {quote(pools[unit])}, too"
             yield Fault(path, found, "each unit in one pool at most", "remove it from one of them")
-
-
-def _listed(partial: Partial, top: str, key: str) -> Iterator[tuple[str, int, str]]:
-    """Yield the names in the lists of all groups or crews as written, parts with faults included."""
-    written = partial.raw.get(top)
-    for name, part in written.items() if isinstance(written, Mapping) else ():
-        entries = part.get(key) if isinstance(part, Mapping) else None
-        for position, entry in enumerate(entries if isinstance(entries, list) else ()):
-            unit = entry.get("unit") if isinstance(entry, Mapping) else entry
-            if unit and isinstance(unit, str):
-                yield name, position, unit
 
 
 def _system_faults(partial: Partial) -> Iterator[Fault]:
@@ -184,7 +140,7 @@ def _system_faults(partial: Partial) -> Iterator[Fault]:
     known = partial.names("units") | partial.names("groups")
     for path, name in places(partial.content.system):
         if name not in known and partial.is_readable("units") and partial.is_readable("groups"):
-            yield _unknown(("system", *path), name, known, "a group or a unit")
+            yield unknown(("system", *path), name, known, "a group or a unit")
 
 
 def _while_down_faults(partial: Partial) -> Iterator[Fault]:
@@ -197,10 +153,10 @@ def _while_down_faults(partial: Partial) -> Iterator[Fault]:
     if content.while_down != "standby_rate":
         return
     # Groups outside of the system go on in any case, and a train does what the group around it does.
-    named = {name: content.groups[name] for name in content.named_in_system if name in content.groups}
+    named = {name: content.groups[name] for name in content.named_in_any_phase if name in content.groups}
     active = [name for name, group in named.items() if group.is_active and group.while_down is None]
     units = partial.names("units") - partial.names("groups")
-    alone = [name for name in content.named_in_system if name in units]
+    alone = [name for name in content.named_in_any_phase if name in units]
     if active:
         found = f"`standby_rate` for the active {_plural('group', active)} {choices(active, 'and')}"
         fix = "write `while_down: continue` or `stop` in each of them"
@@ -213,7 +169,7 @@ def _while_down_faults(partial: Partial) -> Iterator[Fault]:
 
 def _initial_faults(partial: Partial) -> Iterator[Fault]:
     content = partial.content
-    whole = partial.is_whole("units", "groups", "system", "crews")
+    whole = partial.knows_places
     taken: dict[str, str] = {}
     for key, faults in content.initial.items():
         path: Path = ("initial", key)
@@ -221,7 +177,7 @@ def _initial_faults(partial: Partial) -> Iterator[Fault]:
         if not meant:
             if whole:
                 known = [place.key for place in content.placements] + [place.unit for place in content.placements]
-                yield _unknown(path, key, list(dict.fromkeys(known)), "a unit that serves somewhere", on_key=True)
+                yield unknown(path, key, list(dict.fromkeys(known)), "a unit that serves somewhere", on_key=True)
             continue
         if len(meant) > 1:
             keys = [place.key for place in meant if place.group is not None]
@@ -236,6 +192,44 @@ def _initial_faults(partial: Partial) -> Iterator[Fault]:
         if faults.failed > place.count:
             found = f"{faults.failed} failed of {place.count}"
             yield Fault((*path, "failed"), found, f"at most {place.count}", "lower it")
+        elif faults.failed + faults.hidden > place.count:
+            found = f"{faults.failed + faults.hidden} failed of {place.count}, hidden faults included"
+            yield Fault((*path, "hidden"), found, f"at most {place.count}", "lower it")
+        unit = content.units.get(place.unit)
+        if faults.hidden and unit is not None and not unit.may_hide:
+            found = f"a hidden fault of {quote(place.unit)}, whose faults are all known at once"
+            fix = "write `detected: …` below 100 % in the unit, or `failed`"
+            yield Fault((*path, "hidden"), found, "a unit that can have hidden faults", fix)
+
+
+def _load_faults(partial: Partial) -> Iterator[Fault]:
+    """A table of loads has a factor for every number of units that can carry duty, and for no other."""
+    content = partial.content
+    for name, group in content.groups.items():
+        if group.load_sharing is None or group.load_sharing.exponent is not None:
+            continue
+        required = [group.required, *(content.required_in(phase, name) for phase in content.phases)]
+        most = min(max(group.places_for(each) for each in required), group.size)
+        path: Path = ("groups", name, "load_sharing")
+        table = group.load_sharing.table
+        lacking = [str(number) for number in range(1, most + 1) if number not in table]
+        if lacking and partial.is_whole("phases"):
+            found = f"no factor for {', '.join(lacking[:12])} on duty"
+            yield Fault(path, found, f"a factor for each number from 1 to {most}", "add what is missing")
+        for number in table:
+            if number > most:
+                found = f"a factor for {number} on duty, and {most} are on duty at most"
+                yield Fault((*path, str(number)), found, f"numbers from 1 to {most}", "remove it", on_key=True)
+
+
+def _revealing_faults(partial: Partial) -> Iterator[Fault]:
+    if partial.is_said("demand"):
+        return
+    for name, unit in partial.content.units.items():
+        if "demand" in unit.revealed_by:
+            found = "hidden faults revealed by demands, and there are none"
+            fix = "add `demand: {rate: …}` at the top, or remove `demand` here"
+            yield Fault(("units", name, "revealed_by"), found, "`demand` at the top, too", fix)
 
 
 # ------------------------------------------------------------------------------------------------------ targets
@@ -257,19 +251,26 @@ def _target_faults(partial: Partial) -> Iterator[Fault]:
         ):
             found = f"{quote(target.measure)} without a time"
             yield Fault(path, found, "`at` in the target, or a mission", "add `at: …` or `mission: {time: …}`")
+        if target.measure == "hazardous_events_per_year" and not partial.is_said("demand"):
+            found = f"{quote(target.measure)} without demands"
+            yield Fault((*path, "measure"), found, "`demand` at the top", "add `demand: {rate: …}`")
         yield from _subject_faults(partial, target, path)
         if target.state is not None and _is_explicit(partial) and partial.is_readable("states"):
             states = partial.names("states")
             if target.state not in states:
-                yield _unknown((*path, "state"), target.state, states, "a state of `states`")
+                yield unknown((*path, "state"), target.state, states, "a state of `states`")
 
 
 def _subject_faults(partial: Partial, target: Target, path: Path) -> Iterator[Fault]:
     name = target.of
     if name is None:
+        if target.asked.subjects == ("level",):
+            found = f"{quote(target.measure)} without a level"
+            fix = "add `of: NAME`, a name of `levels`"
+            yield Fault(path, found, "`of` with the name of a level", fix, on_key=True)
         return
     where: Path = (*path, "of")
-    if _is_explicit(partial):
+    if _is_explicit(partial) and target.asked.subjects != ("level",):
         found = "`of` in a hand-written chain"
         yield Fault(where, found, "measures of the whole chain", "remove it", on_key=True)
         return
@@ -278,6 +279,7 @@ def _subject_faults(partial: Partial, target: Target, path: Path) -> Iterator[Fa
         "group": partial.names("groups"),
         "unit": partial.names("units"),
         "crew": partial.names("crews"),
+        "level": partial.names("levels"),
     }
     kinds = [kind for kind, names in subjects.items() if name in names]
     if not allowed:
@@ -285,8 +287,8 @@ def _subject_faults(partial: Partial, target: Target, path: Path) -> Iterator[Fa
         yield Fault(where, f"`of` for {quote(target.measure)}", expected, "remove it", on_key=True)
     elif not kinds:
         known = [each for kind in allowed for each in subjects[kind]]
-        if all(partial.is_readable(key) for key in ("units", "groups", "crews")):
-            yield _unknown(where, name, known, f"the name of a {_words(allowed)}")
+        if all(partial.is_readable(key) for key in ("units", "groups", "crews", "levels")):
+            yield unknown(where, name, known, f"the name of a {_words(allowed)}")
     elif not set(kinds) & set(allowed):
         found = f"{quote(name)} is a {_words(kinds)}"
         expected = f"a {_words(allowed)} for {quote(target.measure)}"
@@ -294,11 +296,6 @@ def _subject_faults(partial: Partial, target: Target, path: Path) -> Iterator[Fa
 
 
 # -------------------------------------------------------------------------------------------------------- words
-
-
-def _unknown(path: Path, name: str, known: Collection[str], expected: str, *, on_key: bool = False) -> Fault:
-    fix = suggest(name, known, f"write one of {choices(sorted(known))}" if known else "define it first")
-    return Fault(path, f"{quote(name)} is not known", expected, fix, on_key)
 
 
 def _words(kinds: Iterable[Subject]) -> str:
@@ -315,6 +312,12 @@ _GENERATED_RULES = (
     _member_faults,
     _crew_faults,
     _system_faults,
+    _load_faults,
+    _revealing_faults,
+    stock_faults,
+    schedule_faults,
+    cause_faults,
     _while_down_faults,
     _initial_faults,
+    unbuilt_faults,
 )

@@ -4,14 +4,18 @@ from __future__ import annotations
 
 from typing import Any
 
-from markov.model.content import Content, InitialFaults
+from markov.model.content import Content
+from markov.model.durations import SPREAD_MARK, SpreadTime
 from markov.model.groups import Member
 from markov.model.parameters import Parameter
 from markov.model.part import Part
 from markov.model.readers import Reads, ReadsName
+from markov.model.starts import InitialFaults
 from markov.model.success import SCHEMA_MARK, schema_of_success
 
 _NOTHING = {"type": "null"}
+#: Definitions that the validation library cannot know, with what stands in their place.
+_MARKED = {"Success": SCHEMA_MARK, SpreadTime.__name__: SPREAD_MARK}
 _DIALECT = "https://json-schema.org/draft/2020-12/schema"
 
 
@@ -25,10 +29,11 @@ def json_schema() -> dict[str, Any]:
     assert isinstance(schema, dict)  # the schema of a mapping is one
     definitions = schema.setdefault("$defs", {})
     definitions["Success"] = schema_of_success()
+    definitions[SpreadTime.__name__] = _completed(SpreadTime.model_json_schema(by_alias=True))
     short: dict[type[Part], dict[str, Any]] = {
         Parameter: Reads("number").json_schema(),
         Member: ReadsName().json_schema(),
-        InitialFaults: {"const": "failed"},
+        InitialFaults: {"enum": ["failed", "hidden"]},
     }
     for kind, form in short.items():
         whole = definitions.pop(kind.__name__)
@@ -42,9 +47,10 @@ def _completed(node: Any) -> Any:
         return [_completed(each) for each in node]
     if not isinstance(node, dict):
         return node
-    if all(node.get(key) == value for key, value in SCHEMA_MARK.items()):
-        node = {key: value for key, value in node.items() if key not in SCHEMA_MARK}
-        node["$ref"] = "#/$defs/Success"
+    for name, mark in _MARKED.items():
+        if all(node.get(key) == value for key, value in mark.items()):
+            node = {key: value for key, value in node.items() if key not in mark}
+            node["$ref"] = f"#/$defs/{name}"
     out: dict[str, Any] = {}
     for key, value in node.items():
         if key == "unsaid":

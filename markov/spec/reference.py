@@ -9,14 +9,24 @@ from typing import Literal, Union, get_args, get_origin
 from pydantic.fields import FieldInfo
 
 from markov.measures import MEASURES
-from markov.model.content import Content, InitialFaults
+from markov.model.common_causes import CommonCause
+from markov.model.content import Content
 from markov.model.crews import Crew
-from markov.model.groups import Group, Member, Switchover, Uncovered
+from markov.model.demand import Demand
+from markov.model.durations import SpreadTime
+from markov.model.failure_modes import FailureMode
+from markov.model.groups import Group, Member
 from markov.model.handwritten import State, Transition
 from markov.model.parameters import Parameter, Uncertainty
 from markov.model.part import Part
+from markov.model.phases import Phase
+from markov.model.proof_tests import ProofTest
 from markov.model.readers import Reader
+from markov.model.restoration import Restoration
+from markov.model.spares import SparesPool
+from markov.model.starts import InitialFaults
 from markov.model.success import KEYS
+from markov.model.switchovers import Switch, Switchover, Uncovered
 from markov.model.targets import Mission, Target
 from markov.model.units import Unit
 
@@ -26,11 +36,20 @@ PARTS: tuple[tuple[str, type[Part]], ...] = (
     ("Parameter: `parameters.NAME`", Parameter),
     ("Uncertainty: `parameters.NAME.uncertainty`", Uncertainty),
     ("Unit: `units.NAME`", Unit),
+    ("Failure mode: `units.NAME.failure_modes.NAME`", FailureMode),
+    ("Time with a spread: in place of a mean time", SpreadTime),
     ("Group: `groups.NAME`", Group),
     ("Member: an entry of `members`", Member),
     ("Switchover: `groups.NAME.switchover`", Switchover),
     ("Uncovered fault: `groups.NAME.switchover.uncovered`", Uncovered),
+    ("Switch: `groups.NAME.switchover.switch`", Switch),
     ("Crew pool: `crews.NAME`", Crew),
+    ("Spares pool: `spares.NAME`", SparesPool),
+    ("Test: `tests.NAME`", ProofTest),
+    ("Common cause: `common_causes.NAME`", CommonCause),
+    ("Demand: `demand`", Demand),
+    ("Phase: an entry of `phases`", Phase),
+    ("Restoration: `restoration`", Restoration),
     ("Units failed at the start: `initial.UNIT`", InitialFaults),
     ("Mission: `mission`", Mission),
     ("Target: an entry of `targets`", Target),
@@ -103,7 +122,8 @@ def _words(annotation: object) -> str:
     if origin is dict:
         return f"mapping of names to {_plural(arguments[1])}"
     if origin is tuple:
-        return f"list of {_plural(arguments[0])}"
+        listed = arguments[0]
+        return f"list of {_words(listed) if get_origin(listed) is Literal else _plural(listed)}"
     if isinstance(annotation, type) and issubclass(annotation, Part):
         return f"mapping: {annotation.kind}"
     for hint in getattr(annotation, "__metadata__", ()):

@@ -4,6 +4,8 @@ from fractions import Fraction
 
 import pytest
 
+from markov.model import RepairAtFailed, RepairAtVisits
+
 SPEC = """\
 units:
   pump: {failure_rate: 1e-4 /h, repair_time: 24 h}
@@ -138,10 +140,28 @@ def test_train_is_a_member_by_its_name(read):
         (f"{PAIR}, switchover: {{uncovered: {{outcome: lost, time: 1 h}}}}", "`lost` with a `time`"),
         (f"{PAIR}, switchover: {{uncovered: {{time: 1 h}}}}", "`outcome` is missing"),
         (f"{PAIR}, switchover: {{uncovered: restart}}", "`restart` stands here"),
-        (f"{PAIR}, switchover: {{switch: {{failure_on_demand: 1 %}}}}", "not built yet"),
-        (f"{PAIR}, load_sharing: {{exponent: 1}}", "not built yet"),
-        (f"{PAIR}, repair_when: system_down", "not built yet"),
-        (f"{PAIR}, repair_when: {{failed: 2}}", "not built yet"),
+        (f"{PAIR}, switchover: {{switch: {{}}}}", "is missing"),
+        (f"{PAIR}, switchover: {{switch: {{latent: true}}}}", "is missing"),
+        (f"{PAIR}, switchover: {{switch: {{failure_on_demand: 5}}}}", "more than 1"),
+        (f"{PAIR}, switchover: {{switch: {{failure_rate: 5 h}}}}", "is a time"),
+        (f"{PAIR}, load_sharing: {{exponent: -1}}", "negative"),
+        (f"{PAIR}, load_sharing: {{exponent: 1000}}", "out of range"),
+        (f"{PAIR}, load_sharing: {{exponent: 1, 1: 1}}", "beside factors"),
+        (f"{PAIR}, load_sharing: {{}}", "an empty mapping"),
+        (f"{PAIR}, load_sharing: 1.5", "`1.5` stands here"),
+        (f"{PAIR}, load_sharing: {{one: 1}}", "no number of units"),
+        (f"{PAIR}, load_sharing: {{1: 1 h}}", "is a time"),
+        (f"{PAIR}, load_sharing: {{1: 1, 2: 1}}", "1 are on duty at most"),
+        (f"{PAIR}, on_duty: 2, load_sharing: {{1: 1}}", "no factor for 2 on duty"),
+        (f"{PAIR}, repair_when: sometime", "no choice"),
+        (f"{PAIR}, repair_when: {{failed: 3}}", "once 3 of 2"),
+        (f"{PAIR}, repair_when: {{failed: 0}}", "out of range"),
+        (f"{PAIR}, repair_when: {{failed: 1, visits_every: 1 y}}", "both stand here"),
+        (f"{PAIR}, repair_when: {{visits_every: 0 h}}", "is zero"),
+        (f"{PAIR}, repair_when: {{every: 1 y}}", "`every` is not a key"),
+        (f"{PAIR}, repair_when: {{}}", "an empty mapping"),
+        (f"{PAIR}, repair_when: [1 y]", "a list stands here"),
+        (f"{PAIR}, offline_repair: sometimes", "neither"),
         (f"{PAIR}, return_to_preferred: yes", "`yes` is neither"),
         ("members: [{unit: pump, count: 2}], redundancy: active, while_down: standby_rate", "no standby there"),
         ("members: [water, pump], redundancy: active", "holds itself"),
@@ -181,3 +201,54 @@ def test_half_a_word_is_not_taken_for_one_of_several(told):
     assert (
         told(f"units: {{a: {{failure_rate: 1 /h}}}}\ngroups: {{g: {group}}}\nsystem: g\n").fix == "write one of these"
     )
+
+
+def test_switch_has_faults_of_its_own(read):
+    switch = "{failure_on_demand: 1 %, failure_rate: 2 /y, latent: true, repair_time: 4 h, false_operation_rate: 1 /y}"
+    group = read(SPEC % f"{PAIR}, switchover: {{switch: {switch}}}").groups["water"]
+    assert group.switch.failure_on_demand.exact == Fraction(1, 100)
+    assert group.switch.may_hide
+    assert group.switch.repair_time.exact == 4
+    assert read(SPEC % PAIR).groups["water"].switch is None
+
+
+def test_load_is_shared_by_a_table_or_by_a_power(read):
+    trio = "members: [{unit: pump, count: 3}], redundancy: active"
+    table = read(SPEC % f"{trio}, load_sharing: {{3: 1, 2: 1.3, 1: 2}}").groups["water"].load_sharing
+    assert [table.factor(number, 3) for number in (1, 2, 3)] == [2, Fraction(13, 10), 1]
+    power = read(SPEC % f"{trio}, load_sharing: {{exponent: 2}}").groups["water"].load_sharing
+    assert [power.factor(number, 3) for number in (1, 2, 3)] == [9, Fraction(9, 4), 1]
+
+
+def test_a_power_with_a_broken_exponent_is_good_to_many_digits(read):
+    group = read(SPEC % "members: [{unit: pump, count: 2}], redundancy: active, load_sharing: {exponent: 0.5}")
+    factor = group.groups["water"].load_sharing.factor(1, 2)
+    assert abs(factor * factor - 2) < Fraction(1, 10**70)
+
+
+def test_table_of_loads_reaches_to_the_phase_that_wants_most(read, told):
+    phases = "phases: [{name: calm, duration: 1 d}, {name: storm, required: {water: 2}}]\n"
+    group = "members: [{unit: pump, count: 2}], redundancy: hot_standby, load_sharing: {%s}"
+    assert read(SPEC % (group % "1: 1, 2: 1") + phases).groups["water"].load_sharing.table[2].exact == 1
+    assert "no factor for 2 on duty" in told(SPEC % (group % "1: 1") + phases).found
+
+
+@pytest.mark.parametrize(
+    ("when", "meant"),
+    [("at_once", "at_once"), ("system_down", "system_down"), ("{failed: 2}", RepairAtFailed(2))],
+)
+def test_repair_may_wait(read, when, meant):
+    group = read(SPEC % f"{PAIR}, repair_when: {when}").groups["water"]
+    assert group.repair_when == meant
+    assert group.is_deferred is (when != "at_once")
+
+
+def test_repair_may_wait_for_visits(read):
+    when = read(SPEC % f"{PAIR}, repair_when: {{visits_every: 6 months}}").groups["water"].repair_when
+    assert isinstance(when, RepairAtVisits)
+    assert when.every.exact == 4380
+
+
+def test_misspelt_time_of_repair_gets_its_fix(told):
+    assert told(SPEC % f"{PAIR}, repair_when: system_dwn").fix == "write `system_down`"
+    assert told(SPEC % f"{PAIR}, repair_when: {{visits: 1 y}}").fix == "write `visits_every`"

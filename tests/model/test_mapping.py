@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from markov.errors import SpecError
-from markov.model import Member, Model, Transition
+from markov.model import Member, Model, Named, Transition
 from markov.quantities import parse_quantity
 
 
@@ -89,3 +89,12 @@ def test_model_can_be_written_out():
     written.pop("system")
     assert written["units"] == {"pump": {"failure_rate": "1e-4 /h", "repair_time": "24 h"}}
     assert Model.from_mapping({**written, "system": "water"}).groups["water"].size == 2
+
+
+def test_copy_with_another_criterion_works_out_its_own_places():
+    model = Model.from_mapping({"units": {"a": {"failure_rate": "1 /y"}, "b": {"failure_rate": "1 /y"}}, "system": "a"})
+    assert [place.key for place in model.placements] == ["a"]
+    other = model.model_copy(update={"system": Named("b")})
+    assert other.named_in_system == ("b",)
+    assert [place.key for place in other.placements] == ["b"]
+    assert [place.key for place in model.placements] == ["a"]

@@ -85,8 +85,8 @@ def test_crew_serves_by_priority_or_in_the_order_of_the_list(read):
         ("{size: 1, repairs: [pump, valve], priority: [pump]}", "`valve` left out"),
         ("{size: 1, repairs: [pump], priority: [pump, valve]}", "not among `repairs`"),
         ("{size: 1, repairs: [pump, valve], priority: [pump, valve, pump]}", "stands twice"),
-        ("{size: 1, repairs: [pump], preemptive: false}", "not built yet"),
-        ("{size: 1, repairs: [pump], queue: first_come}", "not built yet"),
+        ("{size: 1, repairs: [pump], preemptive: sometimes}", "neither"),
+        ("{size: 1, repairs: [pump], queue: random}", "no choice"),
     ],
 )
 def test_unsound_crews_are_refused(told, crew, found):
@@ -117,6 +117,23 @@ def test_active_group_may_opt_out_of_standby_rate(read):
 INITIAL = PLANT + "system: {all_of: [water, spare_water, valve]}\ninitial: "
 
 
+def test_hidden_faults_at_the_start(read):
+    text = INITIAL.replace("valve: {failure_rate: 1e-5 /h,", "valve: {failure_rate: 1e-5 /h, detected: 0,")
+    assert read(text + "{valve: hidden}").initial["valve"].hidden == 1
+    assert read(text + "{valve: {hidden: 1}}").initial["valve"].failed == 0
+
+
+def test_hidden_faults_count_with_the_known_ones(told):
+    text = INITIAL.replace("valve: {failure_rate: 1e-5 /h,", "valve: {failure_rate: 1e-5 /h, detected: 0,")
+    assert "2 failed of 1, hidden faults included" in told(text + "{valve: {failed: 1, hidden: 1}}").found
+
+
+def test_crew_may_finish_what_it_has_begun(read):
+    crew = read(f"{CREWED}  a: {{size: 1, repairs: [pump, valve], preemptive: false, queue: first_come}}\n").crews["a"]
+    assert crew.preemptive is False
+    assert crew.queue == "first_come"
+
+
 def test_units_failed_at_the_start(read):
     initial = read(INITIAL + "{valve: failed, water.pump: {failed: 1}, spare_water.pump: {failed: 3}}").initial
     assert {key: faults.failed for key, faults in initial.items()} == {
@@ -134,8 +151,9 @@ def test_units_failed_at_the_start(read):
         ("{water.valve: failed}", "not known"),
         ("{vlave: failed}", "not known"),
         ("{valve: broken}", "`broken` stands here"),
-        ("{valve: hidden}", "not built yet"),
-        ("{valve: {failed: 1, hidden: 1}}", "not built yet"),
+        ("{valve: hidden}", "all known at once"),
+        ("{water.pump: {failed: 1, hidden: 0}, valve: {hidden: 1 h}}", "not a whole number"),
+        ("{valve: {}}", "`failed` or `hidden` is missing"),
         ("{valve: {failed: 1 h}}", "not a whole number"),
     ],
 )
@@ -153,11 +171,16 @@ def test_places_of_items(read):
     ]
 
 
-@pytest.mark.parametrize("key", ["spares", "tests", "common_causes", "demand", "phases", "restoration", "variants"])
-def test_keys_of_later_versions_are_refused_by_name(told, key):
-    problem = told(f"{PLANT}system: water\n{key}: {{}}\n")
-    assert f"`{key}` is not built yet" in problem.found
+def test_keys_of_later_versions_are_refused_by_name(told):
+    problem = told(f"{PLANT}system: water\nvariants: {{}}\n")
+    assert "`variants` is not built yet" in problem.found
     assert (problem.line, problem.column) == (9, 1)
+
+
+@pytest.mark.parametrize("key", ["spares", "tests", "common_causes", "demand", "phases", "restoration", "initial"])
+def test_keys_of_plants_do_not_stand_beside_a_hand_written_chain(problems, key):
+    text = f"states: {{a: {{up: true, initial: true}}}}\n{key}: {{}}\n"
+    assert any(f"`{key}` beside a hand-written chain" in problem.found for problem in problems(text))
 
 
 @pytest.mark.parametrize("year", ["0 h", "1 y", "8760", "12 months", "1 /h", "long"])

@@ -70,8 +70,10 @@ def test_limit_carries_the_unit_of_its_measure(read, target, limit):
         ("measure: availability, at: 1 h, state: x, at_least: 0.9", "`state` for `availability`"),
         ("measure: state_probability, state: x, of: water, at_most: 0.9", "`of`"),
         ("measure: availabilty, at_least: 0.9", "no measure"),
-        ("measure: hazardous_events_per_year, at_most: 1", "not built yet"),
-        ("measure: spares_per_year, at_most: 1", "not built yet"),
+        ("measure: hazardous_events_per_year, at_most: 1", "without demands"),
+        ("measure: level_probability, at_least: 1", "without a level"),
+        ("measure: level_probability, of: water, at_least: 1", "`water` is a group"),
+        ("measure: level_probability, of: half, at_least: 1", "`half` is not known"),
         ("measure: availability, at: 1 h, of: watr, at_least: 0.9", "`watr` is not known"),
         ("measure: availability, at: 1 h, of: fitters, at_least: 0.9", "`fitters` is a crew pool"),
         ("measure: crew_utilisation, of: water, at_most: 0.9", "`water` is a group"),
@@ -112,10 +114,16 @@ def test_positions_are_right_after_a_faulty_target(problems):
     assert [(problem.line, problem.column) for problem in told] == [(10, 40), (12, 10), (12, 68)]
 
 
-@pytest.mark.parametrize("measure", [measure for measure in MEASURES.values() if not measure.needs])
+@pytest.mark.parametrize("measure", MEASURES.values(), ids=lambda measure: measure.name)
 def test_every_measure_can_be_asked(read, measure):
     limit = {"share": "0.5", "time": "5 h", "rate": "1 /h", "number": "5"}[measure.limit]
-    extra = {"interval_reliability": ", for: 1 h", "state_probability": ", state: S"}.get(measure.name, "")
-    text = f"{PLANT}  - {{id: A, measure: {measure.name}, at_most: {limit}{extra}}}\nmission: {{time: 1 h}}\n"
+    needed = {
+        "interval_reliability": ", for: 1 h",
+        "state_probability": ", state: S",
+        "level_probability": ", of: half",
+    }
+    extra = needed.get(measure.name, "")
+    top = "demand: {rate: 1 /y}\nlevels: {half: 50 %}\n"
+    text = f"{top}{PLANT}  - {{id: A, measure: {measure.name}, at_most: {limit}{extra}}}\nmission: {{time: 1 h}}\n"
     (target,) = read(text).targets
     assert target.asked is measure

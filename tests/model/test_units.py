@@ -85,12 +85,17 @@ def test_full_detection_may_be_written(read):
         ("failure_rate: 1 /y, repair_time: 1 h, repair_stages: 0", "out of range"),
         ("failure_rate: 1 /y, repair_time: 1 h, repair_stages: 1.5", "not a whole number"),
         ("failure_rate: 1 /y, capacity: 2", "more than 1"),
-        ("failure_rate: 1 /y, detected: 90 %", "not built yet"),
-        ("failure_rate: 1 /y, revealed_by: [proof]", "not built yet"),
-        ("failure_rate: 1 /y, failure_modes: {stuck: {share: 1}}", "not built yet"),
-        ("failure_rate: 1 /y, cost: 100", "not built yet"),
-        ("failure_rate: 1 /y, mass: 100", "not built yet"),
-        ("failure_rate: 1 /y, power: 100", "not built yet"),
+        ("failure_rate: 1 /y, repair_success: 90 %", "never repaired"),
+        ("failure_rate: 1 /y, repair_time: 1 h, repair_success: 0", "is zero"),
+        ("failure_rate: 1 /y, repair_time: 1 h, repair_success: 90", "more than 1"),
+        ("failure_rate: 1 /y, detected: 101 %", "more than 1"),
+        ("failure_rate: 1 /y, revealed_by: [proof]", "`proof` is no choice"),
+        ("failure_rate: 1 /y, revealed_by: [test, test]", "`test` stands twice"),
+        ("failure_rate: 1 /y, revealed_by: []", "an empty list"),
+        ("failure_rate: 1 /y, revealed_by: [demand]", "there are none"),
+        ("failure_rate: 1 /y, cost: -100", "negative"),
+        ("failure_rate: 1 /y, mass: 100 h", "is a time"),
+        ("failure_rate: 1 /y, power: lots", "neither a number"),
         ("failure_rate: 1 /y, colour: red", "not a key here"),
     ],
 )
@@ -121,3 +126,21 @@ def test_a_delay_before_a_repair_that_takes_no_time_is_refused(told):
     problem = told("units: {a: {failure_rate: 1 /h, repair_time: 0 h, logistic_delay: 2 h}}\nsystem: a\n")
     assert "renewed at once" in problem.found
     assert (problem.line, problem.column) == (1, 51)
+
+
+def test_cost_mass_and_power_are_plain_numbers(read):
+    unit = read(SPEC % "failure_rate: 1 /y, cost: 12_000, mass: 0, power: 5.5").units["pump"]
+    assert (unit.cost.exact, unit.mass.exact, unit.power.exact) == (12000, 0, Fraction(11, 2))
+
+
+def test_hidden_faults_are_revealed_by_tests_unless_more_is_said(read):
+    unit = read(SPEC % "failure_rate: 1 /y, detected: 60 %").units["pump"]
+    assert unit.may_hide
+    assert unit.revealed_by == ("test",)
+    more = read(SPEC % "failure_rate: 1 /y, detected: 60 %, revealed_by: [demand]" + "demand: {rate: 1 /y}\n")
+    assert more.units["pump"].revealed_by == ("demand",)
+
+
+def test_a_delay_before_an_exchange_needs_no_repair(read):
+    text = SPEC % "failure_rate: 1 /y, logistic_delay: 2 h" + "spares: {s: {for: pump, stock: 1, lead_time: 9 d}}\n"
+    assert read(text).units["pump"].logistic_delay.exact == 2

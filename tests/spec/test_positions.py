@@ -57,7 +57,8 @@ PLACES = """\
 24:20 crews.late.repairs#1
 24:26 crews.late.repairs#2
 25:1 sytem
-26:1 spares
+26:10 spares.pump
+26:10 spares.pump
 27:10 mission
 29:22 targets#1.measure
 30:5 targets#2

@@ -36,7 +36,7 @@ def test_keys_of_later_versions_are_named(page):
 
 def test_specs_in_the_reference_are_read(page):
     examples = re.findall(r"```yaml\n(.*?)```", page, re.DOTALL)
-    assert len(examples) == 2
+    assert len(examples) == 3
     for example in examples:
         noted = [text for text in spec.read_text(example).warnings if not text.startswith("Unsupported")]
         assert tuple(noted) in ((), _NO_MISSION)
