@@ -12,7 +12,9 @@ from markov.states.arrows import ArrowKind, ArrowKinds
 from markov.states.explicit import ExplicitSpace, take
 from markov.states.generated import GeneratedSpace, Prepared, generate, generate_prepared, prepare
 from markov.states.plan import Plan, Pool, island_names, plan
-from markov.states.space import Arrows, StateSpace, structure
+from markov.states.regime import Regime
+from markov.states.space import Arrows, StateSpace
+from markov.states.structure import structure
 
 __all__ = [
     "ArrowKind",
@@ -23,6 +25,7 @@ __all__ = [
     "Plan",
     "Pool",
     "Prepared",
+    "Regime",
     "StateSpace",
     "generate",
     "generate_prepared",

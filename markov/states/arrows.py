@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 
 from markov.rates import RateTable
@@ -24,6 +24,10 @@ class ArrowKind:
         Slot of which a repair was completed, or an empty text.
     island : str
         Name of the group or unit that the event belongs to; empty in a hand-written chain.
+    repairs : tuple of str
+        Slots of which further repairs were completed at the same instant.
+    spares : tuple of str
+        Pools that a spare was drawn from, once per spare.
     """
 
     cause: str
@@ -31,6 +35,13 @@ class ArrowKind:
     starts: tuple[str, ...] = ()
     repaired: str = ""
     island: str = ""
+    repairs: tuple[str, ...] = ()
+    spares: tuple[str, ...] = ()
+
+    @property
+    def counts(self) -> bool:
+        """Whether it counts something, so that it matters even where it changes no state."""
+        return bool(self.starts or self.repaired or self.repairs or self.spares)
 
 
 @dataclass
@@ -54,4 +65,4 @@ class ArrowKinds:
         """Return the kind that stands for one of `choices` equally likely results of `number`."""
         kind = self.kinds[number]
         rate = self.rates.times(kind.rate, Fraction(1, choices))
-        return self.intern(ArrowKind(kind.cause, rate, kind.starts, kind.repaired, kind.island))
+        return self.intern(replace(kind, rate=rate))

@@ -47,10 +47,11 @@ class CrewDesk:
             for kind in pool.kinds:
                 for island, number in kind.places:
                     chart = charts[island]
-                    slot = chart.layout.slots[number]
-                    rows = slot.serve if slot.explicit_queue else slot.down
-                    self._served_rows[island, number] = [chart.digits[row].astype(np.int32) for row in rows]
-                    self._waiting[island, number] = slot.calling(chart.digits).astype(np.int32)
+                    lane = chart.layout.lanes[number]
+                    self._served_rows[island, number] = [
+                        chart.digits[row].astype(np.int32) for row in lane.working_rows
+                    ]
+                    self._waiting[island, number] = lane.calling(chart.digits).astype(np.int32)
 
     @property
     def assigns(self) -> bool:
@@ -58,7 +59,7 @@ class CrewDesk:
         return any(kind.explicit_queue for pool in self.pools for kind in pool.kinds)
 
     def served(self, pool: Pool, columns: Columns) -> Iterator[tuple[tuple[int, int, int], Counts]]:
-        """Yield (island, slot number, stage) with the number of items that a crew works on, shape (m,)."""
+        """Yield (island, lane number, stage) with the number of items that a crew works on, shape (m,)."""
         free = np.full(columns.shape[1], pool.size, np.int32)
         for kind in pool.kinds:
             for island, number in kind.places:
@@ -172,13 +173,13 @@ class CrewDesk:
 
     def _candidates(self, island: int, number: int, stage: int, take: bool) -> Counts:
         chart = self._charts[island]
-        slot = chart.layout.slots[number]
+        lane = chart.layout.lanes[number]
         if not take:
-            row = slot.serve[stage]
+            row = lane.serve[stage]
         elif stage < 0:
-            row = slot.fresh
+            row = lane.fresh
         else:
-            row = slot.held[stage]
+            row = lane.held[stage]
         return np.asarray(chart.digits[row], np.int32)
 
 

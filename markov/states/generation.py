@@ -7,18 +7,18 @@ and numbers the new ones.  No step looks at one state alone.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from markov.errors import TooLarge
-from markov.model import Success
 from markov.states.arrows import ArrowKinds
+from markov.states.branching import Mode
 from markov.states.chart import Chart, Table
 from markov.states.crews import Columns, CrewDesk
-from markov.states.space import Arrows, structure
+from markov.states.space import Arrows
 from markov.states.symmetry import Classes, sort_alike
 
 Keys = NDArray[np.int64]
@@ -40,10 +40,15 @@ _TABLE_LIMIT = 1 << 26
 
 @dataclass(frozen=True)
 class Explored:
-    """What an exploration found: packed states in the order of discovery, transitions, initial states."""
+    """What an exploration found: packed states in the order of discovery, transitions, initial states.
+
+    `regimes` holds the transitions of every phase, `instants` what each fixed instant does (the rate of a kind is a
+    chance there).
+    """
 
     keys: Keys
-    arrows: Arrows
+    regimes: tuple[Arrows, ...]
+    instants: tuple[Arrows, ...]
     start: tuple[tuple[int, int, int], ...]  # state, weight, choices: probability weight / choices
 
 
@@ -84,8 +89,7 @@ def explore(
     charts: tuple[Chart, ...],
     desk: CrewDesk,
     kinds: ArrowKinds,
-    success: Success | None,
-    island_of: dict[str, int],
+    up: tuple[Callable[[Columns], NDArray[np.bool_]], ...],
     *,
     classes: Classes = (),
     limit: int = STATE_LIMIT,
@@ -94,10 +98,10 @@ def explore(
 
     Parameters
     ----------
-    charts, desk, kinds, success
-        What acts on the states, what receives the arrow kinds, what makes a state an up state.
-    island_of : dict
-        Name -> number of the island, for the names of the structure.
+    charts, desk, kinds
+        What acts on the states, what receives the arrow kinds.
+    up : tuple of callable
+        For every phase: local state numbers -> in which states the system is up.
     classes : tuple of tuples of int
         Interchangeable islands; states that differ by their order only are one state.
     limit : int
@@ -110,13 +114,15 @@ def explore(
     """
     packing = Packing(charts)
     numbering = _numbering(packing.range)
-    deliver = [chart.layout.node.delivers(chart.digits) for chart in charts]
-    modes = {mode for chart in charts for mode, table in chart.spontaneous.items() if len(table)}
-
-    def up(columns: Columns) -> NDArray[np.bool_]:
-        if success is None:
-            return np.ones(columns.shape[1], np.bool_)
-        return structure(success, lambda name: deliver[island_of[name]][columns[island_of[name]]])
+    phases = range(len(charts[0].laws)) if charts else range(1)
+    heeds = [
+        any(
+            mode != "always" and len(table)
+            for chart in charts
+            for mode, table in (*chart.laws[phase].spontaneous.items(), *chart.laws[phase].crew_driven.values())
+        )
+        for phase in phases
+    ]
 
     first = np.array([[chart.start] for chart in charts], np.int32)
     start = tuple(
@@ -127,26 +133,47 @@ def explore(
         )
         for share in desk.assign(first)
     )
-    source: list[NDArray[np.int32]] = []
-    target: list[NDArray[np.int32]] = []
-    kind: list[NDArray[np.int32]] = []
-    multiple: list[NDArray[np.int32]] = []
+    regimes = [_Collected() for _ in phases]
+    instants = [_Collected() for _ in (charts[0].instants if charts else ())]
     done = 0
     while done < numbering.size:
         keys = numbering.keys_from(done, CHUNK)
         columns = packing.unpack(keys)
-        is_up = up(columns) if modes - {"always"} else None
-        for found in _chunk(charts, desk, packing, keys, columns, is_up):
-            for part in _settled(found, desk, packing, kinds, classes):
-                source.append((part.row + done).astype(np.int32))
-                target.append(numbering.number(part.key))
-                kind.append(part.kind)
-                multiple.append(part.multiple)
+        for phase in phases:
+            is_up = up[phase](columns) if heeds[phase] else None
+            for found in _chunk(charts, phase, desk, packing, keys, columns, is_up):
+                for part in _settled(found, desk, packing, kinds, classes):
+                    regimes[phase].add(part, done, numbering)
+        for number, collected in enumerate(instants):
+            for found in _expand(charts[0].instants[number], columns[0], keys, packing.strides[0], None):
+                for part in _settled(found, desk, packing, kinds, classes):
+                    collected.add(part, done, numbering)
         done += len(keys)
         if numbering.size > limit:
             raise TooLarge(f"more than {limit:,} states; {WHAT_HELPS}")
-    arrows = Arrows(_joined(source), _joined(target), _joined(kind), _joined(multiple))
-    return Explored(numbering.all(), arrows, start)
+    return Explored(
+        numbering.all(), tuple(each.arrows() for each in regimes), tuple(each.arrows() for each in instants), start
+    )
+
+
+class _Collected:
+    """Transitions of one phase, or of one instant, while they are found."""
+
+    def __init__(self) -> None:
+        self._source: list[NDArray[np.int32]] = []
+        self._target: list[NDArray[np.int32]] = []
+        self._kind: list[NDArray[np.int32]] = []
+        self._multiple: list[NDArray[np.int32]] = []
+
+    def add(self, part: _Found, done: int, numbering: _TableNumbering) -> None:
+        self._source.append((part.row + done).astype(np.int32))
+        self._target.append(numbering.number(part.key))
+        self._kind.append(part.kind)
+        self._multiple.append(part.multiple)
+
+    def arrows(self) -> Arrows:
+        """Return all of them as columns, giving up the parts."""
+        return Arrows(_joined(self._source), _joined(self._target), _joined(self._kind), _joined(self._multiple))
 
 
 @dataclass(frozen=True)
@@ -161,6 +188,7 @@ class _Found:
 
 def _chunk(
     charts: tuple[Chart, ...],
+    phase: int,
     desk: CrewDesk,
     packing: Packing,
     keys: Keys,
@@ -168,18 +196,25 @@ def _chunk(
     is_up: NDArray[np.bool_] | None,
 ) -> Iterator[_Found]:
     for island, chart in enumerate(charts):
-        for mode, table in chart.spontaneous.items():
-            allowed = None
-            if mode != "always" and is_up is not None:
-                allowed = is_up if mode == "system_up" else ~is_up
+        for mode, table in chart.laws[phase].spontaneous.items():
+            allowed = _allowed(mode, is_up)
             yield from _expand(table, columns[island], keys, packing.strides[island], allowed)
     for pool in desk.pools:
         for (island, number, stage), served in desk.served(pool, columns):
-            event = charts[island].crew_driven.get((number, stage))
+            event = charts[island].laws[phase].crew_driven.get((number, stage))
             if event is None:
                 continue
-            for found in _expand(event, columns[island], keys, packing.strides[island], served > 0):
+            mode, table = event
+            allowed = _allowed(mode, is_up)
+            at_work = served > 0 if allowed is None else (served > 0) & allowed
+            for found in _expand(table, columns[island], keys, packing.strides[island], at_work):
                 yield _Found(found.row, found.key, found.kind, found.multiple * served[found.row])
+
+
+def _allowed(mode: Mode, is_up: NDArray[np.bool_] | None) -> NDArray[np.bool_] | None:
+    if mode == "always" or is_up is None:
+        return None
+    return is_up if mode == "system_up" else ~is_up
 
 
 def _expand(

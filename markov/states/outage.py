@@ -27,8 +27,8 @@ def fail_all(node: Node, x: Digits) -> None:
     for entry in node.entries:
         if isinstance(entry, Train):
             fail_all(entry.node, x)
-        elif not entry.renewed_at_once:
-            x[entry.entry_row] += entry.good(x)
+        else:
+            entry.fail(x, entry.sound(x))
     stand_down(node, x)
     fill_by_rank(node, x)  # what is renewed at once is good again and takes the empty places
 
@@ -65,11 +65,15 @@ def make_all_good(node: Node, x: Digits, where: NDArray[np.bool_] | None = None)
     here = np.ones(x.shape[1], np.bool_) if where is None else where
     if node.outage >= 0:
         x[node.outage][here] = 0
+    if node.switch is not None:
+        for row in (*node.switch.down, node.switch.hidden):
+            if row >= 0:
+                x[row][here] = 0
     for entry in node.entries:
         if isinstance(entry, Train):
             make_all_good(entry.node, x, where)
         else:
-            for row in entry.failed_rows:
+            for row in entry.out_rows:
                 x[row][here] = 0
     stand_down(node, x, where)
 
@@ -123,5 +127,5 @@ def drop_idle_outage(node: Node, x: Digits) -> None:
         if node.outage >= 0 and node.outcome in ("until_repair", "manual_takeover", "restart_without_failed"):
             x[node.outage][short] = 0
     elif node.outage >= 0 and node.outcome in ("manual_takeover", "restart_without_failed"):
-        started_in_another_way = node.start_again and node.takeover_rate is not None
-        x[node.outage][(node.waiting(x) + node.starting(x) == 0) & (not started_in_another_way)] = 0
+        started_in_another_way = node.start_again and node.takeover is not None
+        x[node.outage][(node.callable(x) + node.starting(x) == 0) & (not started_in_another_way)] = 0

@@ -13,17 +13,20 @@ from markov.states.events import island_events
 from markov.states.layout import Digits, Entry, Layout, Node, Train
 
 
-def critical(layout: Layout, x: Digits) -> NDArray[np.bool_]:
-    """Tell in which states one more unit fault would stop the group, shape (k,).
+def critical(layout: Layout, name: str, x: Digits) -> NDArray[np.bool_]:
+    """Tell in which states one more unit fault would stop a group of the top level, shape (k,).
 
     The fault is taken as covered, every start as a success, every takeover as done at once.  States in which the
     group does not deliver anyway are not critical.
     """
-    perfect = Layout(_perfect(layout.node), layout.tops, layout.labels)
+    node = layout.node_named(name)
+    if node is None:
+        raise AssertionError(f"{name} is not in this island")
+    perfect = Layout((_perfect(node),), layout.tops, layout.labels)
     dice = Dice(RateTable())
-    delivers = layout.node.delivers(x)
+    delivers = node.delivers(x)
     x = x.copy()
-    _finish_switchovers(layout.node, x)
+    _finish_switchovers(node, x)
     result = np.zeros(x.shape[1], np.bool_)
     for event in island_events(dice, perfect):
         if not event.is_fault or event.mode == "system_down":
@@ -34,7 +37,7 @@ def critical(layout: Layout, x: Digits) -> NDArray[np.bool_]:
         before = x[:, exposed]
         branch = Branch(before.copy(), before, exposed, np.ones(len(exposed), np.int64), event.rate, (event.cause,))
         for after in event.apply(branch):
-            result[after.origin[~perfect.node.delivers(after.x)]] = True
+            result[after.origin[~perfect.nodes[0].delivers(after.x)]] = True
     return result
 
 
@@ -55,5 +58,9 @@ def _perfect(node: Node) -> Node:
         if isinstance(entry, Train):
             entries.append(replace(entry, node=_perfect(entry.node), start=()))
         else:
-            entries.append(replace(entry, start_failure=None, start=()))
-    return replace(node, coverage=(), takeover_rate=None, switching=(), entries=tuple(entries))
+            detected = replace(entry.faults[0], label="", factors=(), hidden=-1, alone=None)
+            hidden = tuple(replace(each, by_system_failure=False) for each in entry.hidden)
+            entries.append(replace(entry, start_failure=None, start=(), faults=(detected,), hidden=hidden))
+    return replace(
+        node, coverage=(), takeover=None, switching=(), switch=None, release="at_once", entries=tuple(entries)
+    )

@@ -5,9 +5,21 @@ from __future__ import annotations
 import numpy as np
 
 from markov.states.branching import Branch, Dice
-from markov.states.layout import Entry, Node, Train
+from markov.states.faults import blocked
+from markov.states.layout import Entry, Node, Path, Slot, Train, node_of, running
 from markov.states.outage import repair_ends_outage
 from markov.states.takeover import attempt, empty_places, fill_by_rank, release_surplus_start
+
+
+def put_back(dice: Dice, path: Path, slot: Slot, branch: Branch) -> list[Branch]:
+    """Place one item that has just become good."""
+    node = node_of(path[-1])
+    result: list[Branch] = []
+    runs, idle = branch.split(running(path, branch.x))
+    for part, carries in ((runs, True), (idle, False)):
+        if len(part):
+            result.extend(good_again(dice, node, slot, part, carries=carries))
+    return result
 
 
 def good_again(dice: Dice, node: Node, entry: Entry, branch: Branch, *, carries: bool) -> list[Branch]:
@@ -70,12 +82,15 @@ def _take_empty_place(dice: Dice, node: Node, entry: Entry, branch: Branch, *, d
         tried, waits = branch.split(empty_places(node, branch.x) > 0)
         result = [waits] if len(waits) else []
         if len(tried):
-            started, refused = attempt(dice, entry, tried)
+            tried, stuck = tried.split(~blocked(node, tried.x))
+            if len(stuck):
+                result.append(stuck)
+            started, refused = attempt(dice, entry, tried) if len(tried) else ([], [])
             for each in started:
                 each.x[entry.duty if during_outage or not entry.start else entry.start[0]] += 1
             result += started + refused
         return result
-    place = node.on_duty(branch.x) < node.places
+    place = node.on_duty(branch.x) + node.seeming(branch.x) < node.places
     branch.x[entry.duty] += place.astype(np.int32)
     if isinstance(entry, Train):
         fill_by_rank(entry.node, branch.x, place)

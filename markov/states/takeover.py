@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 import numpy as np
 from numpy.typing import NDArray
 
 from markov.states.branching import Branch, Dice
-from markov.states.layout import Digits, Entry, Node, Path, Train, node_of, running
+from markov.states.layout import Digits, Entry, Node, Path, Slot, Train, node_of, running
 
 
 def start_one(dice: Dice, node: Node, branch: Branch, *, timed: bool = True) -> list[Branch]:
-    """Try the waiting members in rank order until one starts or none is left.
+    """Try the members that seem to wait, in rank order, until one starts or none is left.
 
     Every column of `branch` has one empty duty place that is to be filled.  Each attempt is a draw of its own; an item
     that fails to start is failed from that moment.  With `timed` the switchover time, where the group has one, begins
@@ -24,7 +26,7 @@ def start_one(dice: Dice, node: Node, branch: Branch, *, timed: bool = True) -> 
             done.append(todo)
             continue
         entry = node.entries[rank]
-        able, unable = todo.split(entry.waiting(todo.x) > 0)
+        able, unable = todo.split(entry.callable(todo.x) > 0)
         if len(unable):
             work.append((unable, rank + 1))
         if len(able):
@@ -42,7 +44,7 @@ def start_all(dice: Dice, node: Node, branch: Branch, *, timed: bool = True) -> 
     work = [branch]
     while work:
         todo = work.pop()
-        able, settled = todo.split((empty_places(node, todo.x) > 0) & (node.waiting(todo.x) > 0))
+        able, settled = todo.split((empty_places(node, todo.x) > 0) & (node.callable(todo.x) > 0))
         if len(settled):
             done.append(settled)
         if len(able):
@@ -61,13 +63,42 @@ def attempt(dice: Dice, entry: Entry, branch: Branch) -> tuple[list[Branch], lis
     """
     if isinstance(entry, Train):
         return _start_train(dice, entry, branch)
-    branch = branch.counted_start(entry.name)
-    if entry.start_failure is None:
-        return [branch.told(f"{entry.unit} starts")], []
-    refused, started = dice.draw(branch, entry.start_failure, f"{entry.unit} fails to start", f"{entry.unit} starts")
-    if refused is not None:
-        refused.x[entry.entry_row] += 1
-    return [started] if started is not None else [], [refused] if refused is not None else []
+    started: list[Branch] = []
+    refused: list[Branch] = []
+    for called, deceptive in _called(dice, entry, branch.counted_start(entry.name)):
+        if deceptive is not None:
+            row, lane = deceptive
+            called.x[row] -= 1
+            entry.fail(called.x, lane=lane)
+            refused.append(called.told(f"{entry.unit}, failed unnoticed, does not start"))
+        elif entry.start_failure is None:
+            started.append(called.told(f"{entry.unit} starts"))
+        else:
+            told = f"{entry.unit} fails to start", f"{entry.unit} starts"
+            fails, starts = dice.draw(called, entry.start_failure, *told)
+            if fails is not None:
+                entry.fail(fails.x)
+                refused.append(fails)
+            if starts is not None:
+                started.append(starts)
+    return started, refused
+
+
+def _called(dice: Dice, slot: Slot, branch: Branch) -> Iterator[tuple[Branch, tuple[int, int] | None]]:
+    """Pick one of the items that seem to wait, which all look alike.
+
+    Yields
+    ------
+    branch, deceptive
+        Row and lane of an item that cannot start, though it seems to be good; None for a good one.
+    """
+    deceptive = [(each.apart, each.lane) for each in slot.hidden]
+    if not deceptive:
+        yield branch, None
+        return
+    weights = [slot.waiting(branch.x), *(branch.x[row] for row, _ in deceptive)]
+    for number, part in dice.choose(branch, weights):
+        yield part, None if number == 0 else deceptive[number - 1]
 
 
 def _start_train(dice: Dice, train: Train, branch: Branch) -> tuple[list[Branch], list[Branch]]:
@@ -128,30 +159,56 @@ def return_to_preferred(dice: Dice, path: Path, branch: Branch) -> list[Branch]:
             later = [other for other in node.entries if other.rank > entry.rank]
             runs_later = np.zeros(len(todo), np.bool_)
             for other in later:
-                runs_later |= todo.x[other.duty] > 0
-            able = runs_later & (entry.waiting(todo.x) > 0) & ~node.in_outage(todo.x) & running(path, todo.x)
+                runs_later |= on_duty_in_appearance(other, todo.x) > 0
+            able = runs_later & (entry.callable(todo.x) > 0) & ~node.in_outage(todo.x) & running(path, todo.x)
+            if node.switch is not None:
+                able &= ~node.switch.failed(todo.x)
             here, todo = todo.split(able)
             if not len(here):
                 continue
             started, refused = attempt(dice, entry, here)
             for each in started:
-                _swap(entry, later, each.x)
-            work += [each.told(f"duty returns to {entry.unit}") for each in started] + refused
+                for swapped in take_last_off(dice, later, each):
+                    swapped.x[entry.duty] += 1
+                    work.append(swapped.told(f"duty returns to {entry.unit}"))
+            work += refused
         if len(todo):
             done.append(todo)
     return done
 
 
-def _swap(entry: Entry, later: list[Entry], x: Digits) -> None:
-    """Take the member listed last off duty and put `entry` on; in place."""
-    open_columns = np.ones(x.shape[1], np.bool_)
-    for other in reversed(later):
-        here = open_columns & (x[other.duty] > 0)
-        x[other.duty] -= here.astype(np.int32)
+def take_last_off(dice: Dice, entries: list[Entry], branch: Branch) -> list[Branch]:
+    """Let one member of those listed last, of which one seems to be on duty, wait.
+
+    Items of one kind look alike, whether a hidden fault keeps one from delivering or not.
+    """
+    done: list[Branch] = []
+    rest = branch
+    for other in reversed(entries):
+        here, rest = rest.split(on_duty_in_appearance(other, rest.x) > 0)
+        if not len(here):
+            continue
         if isinstance(other, Train):
-            stand_down(other.node, x, here)
-        open_columns &= ~here
-    x[entry.duty] += 1
+            here.x[other.duty] = 0
+            stand_down(other.node, here.x)
+            done.append(here)
+            continue
+        placed = [each for each in other.hidden if each.placed >= 0]
+        weights = [here.x[other.duty].copy(), *(here.x[each.placed].copy() for each in placed)]
+        for number, part in dice.choose(here, weights):
+            if number == 0:
+                part.x[other.duty] -= 1
+            else:
+                part.x[placed[number - 1].placed] -= 1
+                part.x[placed[number - 1].apart] += 1
+            done.append(part)
+    return [*done, rest] if len(rest) else done
+
+
+def on_duty_in_appearance(entry: Entry, x: Digits) -> NDArray[np.int32]:
+    """Count members that seem to carry duty, shape (m,)."""
+    count: NDArray[np.int32] = (x[entry.duty] + entry.seeming(x)).astype(np.int32)
+    return count
 
 
 def fill_by_rank(node: Node, x: Digits, where: NDArray[np.bool_] | None = None) -> None:
@@ -166,7 +223,7 @@ def fill_by_rank(node: Node, x: Digits, where: NDArray[np.bool_] | None = None) 
                 x[row][here] = 0
     for entry in node.entries:
         if not node.active:
-            free = np.maximum(node.places - node.on_duty(x), 0)
+            free = np.maximum(node.places - node.on_duty(x) - node.seeming(x), 0)
             added = np.where(here, np.minimum(free, entry.waiting(x)), 0).astype(np.int32)
             x[entry.duty] += added
             if isinstance(entry, Train):
@@ -191,8 +248,8 @@ def stand_down(node: Node, x: Digits, where: NDArray[np.bool_] | None = None) ->
 
 
 def empty_places(node: Node, x: Digits) -> NDArray[np.int32]:
-    """Count duty places that are neither filled nor about to be by a start under way, shape (m,)."""
-    return (node.places - node.on_duty(x) - node.starting(x)).astype(np.int32)
+    """Count duty places that are neither filled, or seem so, nor about to be by a start under way, shape (m,)."""
+    return (node.places - node.on_duty(x) - node.seeming(x) - node.starting(x)).astype(np.int32)
 
 
 def release_surplus_start(node: Node, x: Digits) -> None:
@@ -208,3 +265,29 @@ def release_surplus_start(node: Node, x: Digits) -> None:
             if isinstance(entry, Train):
                 stand_down(entry.node, x, here)
             surplus &= ~here
+
+
+def swap_in(dice: Dice, node: Node, branch: Branch) -> list[Branch]:
+    """Start one standby though nothing failed, as a false operation of the switch does.
+
+    If it starts, it fills an empty place, or the member on duty that is listed last waits; if not, nothing changes.
+    """
+    done: list[Branch] = []
+    work = [branch]
+    for entry in node.entries:
+        rest: list[Branch] = []
+        for todo in work:
+            able, unable = todo.split(entry.callable(todo.x) > 0)
+            if len(unable):
+                rest.append(unable)
+            if len(able):
+                started, refused = attempt(dice, entry, able)
+                for each in started:
+                    full, open_place = each.split(empty_places(node, each.x) <= 0)
+                    swapped = take_last_off(dice, list(node.entries), full) if len(full) else []
+                    for one in [*swapped, *([open_place] if len(open_place) else [])]:
+                        one.x[entry.duty] += 1
+                        done.append(one)
+                done += refused
+        work = rest
+    return done + work

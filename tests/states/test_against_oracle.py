@@ -109,7 +109,7 @@ def rewards_of(space: GeneratedSpace, spec: Spec) -> dict[str, NDArray[np.float6
     }
     grouped = grouped_kinds(spec)
     for layout in space.plan.islands:
-        place = layout.node.name
+        place = layout.name
         if place in spec["groups"] or place not in grouped:
             rewards[f"{place}: units failed"] = space.failed(place)
         rewards[f"{place}: capacity"] = space.capacity(place)
