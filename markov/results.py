@@ -82,6 +82,111 @@ class TargetResult:
 
 
 @dataclass(frozen=True)
+class Figure:
+    """A number beside others, with the bound proven for it, or the reason why there is none.
+
+    Attributes
+    ----------
+    value : float or None
+    lower, upper : float or None
+        The exact answer lies between them.  Both are None for an estimate.
+    reason : str or None
+    """
+
+    value: float | None
+    lower: float | None = None
+    upper: float | None = None
+    reason: str | None = None
+
+
+@dataclass(frozen=True)
+class Ratio:
+    """How two plants compare: by unavailability in the long run, by unreliability at the mission time.
+
+    `mission` is None where the spec has no mission time.
+    """
+
+    long_run: Figure
+    mission: Figure | None
+
+
+@dataclass(frozen=True)
+class Effect:
+    """What one dependence does to the answer.
+
+    Attributes
+    ----------
+    dependence : str
+        Fixed name, such as ``imperfect_coverage``.
+    where : tuple of str
+        Groups, units, crew pools, tests or phases that have it.
+    factor : Ratio
+        The system as it is over the system with only this made perfect.
+    left : Ratio
+        The system with only this made perfect over perfect blocks: the difference that remains to be explained.
+    """
+
+    dependence: str
+    where: tuple[str, ...]
+    factor: Ratio
+    left: Ratio
+
+
+@dataclass(frozen=True)
+class Cost:
+    """One line of the price of redundancy: a measure, or a number of things installed.
+
+    Attributes
+    ----------
+    name : str
+        A measure, or ``items``, ``spares_in_stock``, ``cost``, ``mass``, ``power``.
+    unit : str
+        Unit of measure, as in `Result`.
+    system, plain : Figure
+        Of the system, and of the same with each group cut down to its `required` first units.
+    note : str
+        What the number leaves out, if anything.
+    """
+
+    name: str
+    unit: str
+    system: Figure
+    plain: Figure
+    note: str = ""
+
+
+@dataclass(frozen=True)
+class Redundancy:
+    """What redundancy gains, what keeps it from gaining more, and what it costs.
+
+    Attributes
+    ----------
+    mission_hours : Fraction or None
+    over_single_unit : Ratio
+        Each group cut down to its `required` first units, over the system: how many times worse that is.
+    over_independent_blocks : Ratio
+        Each group solved alone with crews of its own and combined through the structure, over the system.
+    over_perfect_blocks : Ratio
+        The system with every dependence made perfect at once, over the system: the answer of independent blocks.
+    effects : tuple of Effect
+        One for each dependence of the spec.
+    long_run_cause, mission_cause : str or None
+        The dependence that makes most of the difference to perfect blocks, in the long run and at the mission time;
+        None where no single one makes a proven difference.
+    costs : tuple of Cost
+    """
+
+    mission_hours: Fraction | None
+    over_single_unit: Ratio
+    over_independent_blocks: Ratio
+    over_perfect_blocks: Ratio
+    effects: tuple[Effect, ...]
+    long_run_cause: str | None
+    mission_cause: str | None
+    costs: tuple[Cost, ...]
+
+
+@dataclass(frozen=True)
 class Solution:
     """A solved model: everything that `markov solve` prints.
 
@@ -102,6 +207,8 @@ class Solution:
     assumptions : tuple of str
         Choices that the spec leaves unsaid and that are able to change a result.
     warnings : tuple of str
+    redundancy : Redundancy or None
+        None for a chain written by hand.
     """
 
     title: str
@@ -117,6 +224,7 @@ class Solution:
     targets: tuple[TargetResult, ...]
     assumptions: tuple[str, ...]
     warnings: tuple[str, ...]
+    redundancy: Redundancy | None = None
 
     @property
     def exit_status(self) -> int:

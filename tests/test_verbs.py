@@ -70,6 +70,6 @@ def test_a_draft_into_a_folder_that_is_not_there_says_so(tmp_path: Path) -> None
 
 def test_a_solution_shows_itself_in_a_notebook(lock: Path) -> None:
     html = markov.solve(lock)._repr_html_()
-    assert html.count("<table>") == 2
+    assert html.count("<table>") == 5  # targets, results; gains, what limits them, costs
     assert "LOCK-2" in html
     assert "licensed practice" in html

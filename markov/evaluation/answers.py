@@ -5,7 +5,7 @@ This is the only file that sees both wings.  A question whose answer does not ex
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
@@ -30,10 +30,13 @@ from markov.chain import (
 from markov.errors import IllPosed
 from markov.evaluation.questions import Question
 from markov.rates import split_exact
-from markov.states import StateSpace
+from markov.states import Arrows, GeneratedSpace, StateSpace
 
 Mask = NDArray[np.bool_]
 Values = NDArray[np.float64]
+
+#: A delivered share is formed by a few roundings; a level reached but for these is reached.
+_CLOSE = 1e-12
 
 #: Relative error of one rounded operation.
 UNIT = 2.0**-53
@@ -58,6 +61,8 @@ class Answers:
         Times in hours at which values will be asked for; they are worked out together.
     method : str, optional
         Method for values at a time; chosen by size and time if left out.
+    levels : mapping, optional
+        Of each level the least share delivered.
     """
 
     def __init__(
@@ -66,8 +71,11 @@ class Answers:
         year_hours: Fraction,
         times: Sequence[Fraction] = (),
         method: Method | None = None,
+        *,
+        levels: Mapping[str, Fraction] | None = None,
     ) -> None:
         self.space = space
+        self._levels = levels or {}
         self._method = method
         self.year_hours = year_hours
         self._times = tuple(sorted(set(times)))
@@ -160,6 +168,23 @@ class Answers:
     def _frequency(self, of: str | None) -> Enclosure:
         passages = self._failure_flow(of)
         return self.long_run(lambda pi: pi.weighted(passages))
+
+    def count_rate(self, counts: Callable[[Arrows], Values]) -> Enclosure:
+        """Return the long-run number per hour of something that each transition counts so many times.
+
+        Parameters
+        ----------
+        counts : callable
+            Transitions -> how many times each counts, shape (a,).
+        """
+        arrows = self.space.arrows
+        number = counts(arrows)
+        counting = number > 0
+        source = arrows.source[counting]
+        rates = self.arrow_rates[0][counting] * number[counting]
+        weights = np.bincount(source, weights=rates, minlength=self.space.size).astype(np.float64)
+        terms = int(np.bincount(source, minlength=1).max()) if len(source) else 0
+        return self.long_run(lambda pi: pi.weighted(weights, (terms + 3) * UNIT))
 
     def _failure_flow(self, of: str | None) -> Vector:
         up = self.up(of)
@@ -327,6 +352,31 @@ class Answers:
             raise IllPosed(f"the chance to survive to this time is below {survivors.upper:.0e}, too small to divide by")
         return alive.weighted(self._failure_flow(question.of)) / survivors
 
+    # --- functions on demand --------------------------------------------------------------------------------------
+
+    def acts(self, of: str | None) -> Mask:
+        """States in which the system or a group acts needlessly, shape (n,)."""
+        if isinstance(self.space, GeneratedSpace):
+            return self.space.regimes[0].acts(of)
+        return np.zeros(self.space.size, np.bool_)
+
+    def _fails_to_act(self, of: str | None) -> Mask:
+        """States in which a subject is down and does not act: what a demand would meet, shape (n,)."""
+        return ~self.up(of) & ~self.acts(of)
+
+    def _pfd(self, question: Question) -> Enclosure:
+        return self.long_run_share(self._fails_to_act(question.of))
+
+    def _pfh(self, question: Question) -> Enclosure:
+        fails = self._fails_to_act(question.of)
+        passages = flow(self.generator, ~fails, fails)
+        return self.long_run(lambda pi: pi.weighted(passages))
+
+    def _spurious_failures_per_year(self, question: Question) -> Enclosure:
+        acts = self.acts(question.of)
+        passages = flow(self.generator, ~acts, acts)
+        return self.per_year(self.long_run(lambda pi: pi.weighted(passages)))
+
     def _mean_failure_rate(self, question: Question) -> Enclosure:
         at = question.positive_time
         return self._failed_by(at, question.of).over(at)
@@ -357,6 +407,12 @@ class Answers:
             return self.long_run(lambda pi: pi.weighted(share, *weights)).capped()
         return self._states_at(question.at_hours).weighted(share, *weights).capped()
 
+    def _level_probability(self, question: Question) -> Enclosure:
+        if question.of is None or question.of not in self._levels:
+            raise IllPosed("there is no such level")
+        least = float(self._levels[question.of]) - _CLOSE
+        return self.share_of_states(self.space.capacity(None) >= least, question.at_hours).capped()
+
 
 #: Measures that are integrals over time, worked out together for all subjects.
 _INTEGRALS = frozenset({"mean_availability", "mean_unavailability", "expected_failures"})
@@ -384,10 +440,12 @@ _MEASURES: dict[str, Callable[[Answers, Question], Enclosure]] = {
     "hazard_rate": Answers._hazard_rate,
     "mean_failure_rate": Answers._mean_failure_rate,
     # Without tests nothing repeats: the mean and the peak over a cycle of any length are the long-run values.
-    "pfd_average": Answers._unavailability,
-    "pfd_peak": Answers._unavailability,
-    "pfh": Answers._failure_frequency,
+    "pfd_average": Answers._pfd,
+    "pfd_peak": Answers._pfd,
+    "pfh": Answers._pfh,
+    "spurious_failures_per_year": Answers._spurious_failures_per_year,
     "mean_units_failed": Answers._mean_units_failed,
     "mean_capacity": Answers._mean_capacity,
+    "level_probability": Answers._level_probability,
     "state_probability": Answers._state_probability,
 }

@@ -115,7 +115,8 @@ class _Plant:
         if number is None:
             raise IllPosed(f"{name} is not in the chain")
         chart = self.space.charts[number]
-        local = self._node(chart.layout.node, chart.digits)
+        node = chart.layout.node_named(name) or chart.layout.nodes[0]  # alike islands share the chart of the first
+        local = self._node(node, chart.digits)
         where = self.space.columns[number]
         return Delivery(local.share[where], local.slope[where])
 

@@ -8,11 +8,11 @@ from fractions import Fraction
 
 from markov.chain import Enclosure
 from markov.errors import IllPosed
-from markov.evaluation.answers import Answers
 from markov.evaluation.combining import Share, combine
+from markov.evaluation.plain import plain_arrangement
 from markov.evaluation.questions import Question
-from markov.evaluation.solver import Solver
-from markov.model import Group, Member, Model, Named
+from markov.evaluation.solver import Solver, answers_of
+from markov.model import Model, Named
 from markov.states import generate
 
 #: The measures that `gain` answers.
@@ -35,27 +35,14 @@ def gain(model: Model, solver: Solver, question: Question) -> Enclosure:
     if not solver.can_fail(None) or system.upper == 0:
         raise IllPosed("no down state can be reached, so there is nothing to compare with")
     single = question.measure == "gain_over_single_unit"
-    rival = plain_arrangement if single else independent_blocks
+    rival = single_units if single else independent_blocks
     method = "ratio of two chains" if single else "groups solved alone, combined through the structure"
     return replace(rival(model, question.at_hours) / system, method=f"{method}; {system.method}")
 
 
-def plain_arrangement(model: Model, at: Fraction | None) -> Enclosure:
+def single_units(model: Model, at: Fraction | None) -> Enclosure:
     """Return the unavailability (at a time: unreliability) with each group cut down to its `required` first units."""
-    plain = model.model_copy(update={"groups": {name: _plain(group) for name, group in model.groups.items()}})
-    return _solve(plain, at)
-
-
-def _plain(group: Group) -> Group:
-    members: list[Member] = []
-    left = group.required
-    for member in group.members:
-        count = min(member.count, left)
-        if count:
-            members.append(member.model_copy(update={"count": count}))
-            left -= count
-    nothing = {"on_duty": None, "redundancy": None, "dormancy_factor": None, "coverage": None, "switchover": None}
-    return group.model_copy(update={**nothing, "members": tuple(members)})
+    return Solver(plain_arrangement(model), () if at is None else (at,)).answer(_badness(at))
 
 
 def independent_blocks(model: Model, at: Fraction | None) -> Enclosure:
@@ -64,16 +51,13 @@ def independent_blocks(model: Model, at: Fraction | None) -> Enclosure:
         raise AssertionError("a generated chain has a system")
     parts: dict[str, Share] = {}
     for name in model.named_in_system:
-        alone = model.model_copy(update={"system": Named(name), "targets": ()})
+        phases = tuple(phase.model_copy(update={"system": None}) for phase in model.phases)
+        alone = model.model_copy(update={"system": Named(name), "phases": phases, "targets": ()})
         space = generate(alone, alone=name)
-        answers = Answers(space, model.year_hours, () if at is None else (at,))
+        answers = answers_of(model, space, () if at is None else (at,))
         up = "steady_state_availability" if at is None else "reliability"
         parts[name] = Share(answers.answer(Question(up, at_hours=at)), answers.answer(_badness(at)))
     return combine(model.system, parts).down
-
-
-def _solve(model: Model, at: Fraction | None) -> Enclosure:
-    return Solver(model, () if at is None else (at,)).answer(_badness(at))
 
 
 def _badness(at: Fraction | None) -> Question:

@@ -59,10 +59,12 @@ def _parts(model: Model, plan: Plan) -> dict[str, int]:
     for pool in plan.pools:
         join([island for kind in pool.kinds for island, _ in kind.places])
     in_system = set(names(model.system)) if model.system is not None else set()
-    inside = [island for island, layout in enumerate(plan.islands) if layout.node.name in in_system]
+    inside = [
+        island for island, layout in enumerate(plan.islands) if any(node.name in in_system for node in layout.nodes)
+    ]
     if any(plan.islands[island].heeds_the_system for island in inside):
         join(inside)
-    return {layout.node.name: part(island) for island, layout in enumerate(plan.islands)}
+    return {node.name: part(island) for island, layout in enumerate(plan.islands) for node in layout.nodes}
 
 
 def _gather(success: Success, part_of: dict[str, int], found: list[tuple[int, Success]]) -> Success:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -90,8 +90,10 @@ def all_questions(model: Model, times: Sequence[Fraction]) -> tuple[Question, ..
 
 def applies(model: Model, measure: Measure) -> bool:
     """Tell whether a measure of the whole system means something for a model and needs no further word."""
-    if measure.needs or measure.name in ("interval_reliability", "state_probability"):
+    if measure.name in ("interval_reliability", "state_probability", "level_probability"):
         return False
+    if measure.name in _NEEDS:
+        return _NEEDS[measure.name](model)
     if measure.name in ("crew_utilisation", "waiting_for_crew", "probability_of_waiting"):
         return bool(model.crews)
     if model.explicit:
@@ -106,6 +108,14 @@ def applies(model: Model, measure: Measure) -> bool:
     if measure.name == "starts_per_year":
         return any(not group.is_active for group in model.groups.values())
     return True
+
+
+_NEEDS: dict[str, Callable[[Model], bool]] = {
+    "hazardous_events_per_year": lambda model: model.demand is not None,
+    "spurious_failures_per_year": lambda model: any(unit.may_act_needlessly for unit in model.units.values()),
+    "spares_per_year": lambda model: bool(model.spares),
+    "tests_per_year": lambda model: bool(model.tests),
+}
 
 
 def _at_times(measure: Measure, points: Sequence[Fraction], added: Sequence[Fraction]) -> Iterator[Question]:

@@ -5,13 +5,14 @@ from __future__ import annotations
 from collections.abc import Hashable, Iterator, Sequence
 from functools import cached_property
 
+from markov.errors import UsageError
 from markov.evaluation.answers import Answers
 from markov.evaluation.questions import Question, subjects_of
 from markov.model import Model, Named
 from markov.rates import Factor
 from markov.states import GeneratedSpace, Prepared, generate_prepared, island_names, plan, prepare, take
 from markov.states.generation import STATE_LIMIT
-from markov.states.layout import Node, Train
+from markov.states.layout import Clock, Node, Train
 
 
 class Chains:
@@ -30,6 +31,9 @@ class Chains:
     """
 
     def __init__(self, model: Model, questions: Sequence[Question], *, limit: int = STATE_LIMIT) -> None:
+        unknown = _not_refilled(model)
+        if unknown:
+            raise UsageError(f"samples and derivatives are not built for models with {' and '.join(unknown)}")
         self.model = model
         self._limit = limit
         self._subjects = tuple(dict.fromkeys(q.of for q in questions if q.of is not None))
@@ -62,14 +66,14 @@ class Chains:
     def loading(self) -> list[Answers]:
         """All chains that load crews: that of the plant, then those of what stands outside of it and never waits."""
         chains = [self.plant]
-        solved = {layout.node.name for layout in plan(self.model, subjects_of(self.model)).islands}
+        solved = {node.name for layout in plan(self.model, subjects_of(self.model)).islands for node in layout.nodes}
         for name in island_names(self.model):
             if name not in solved:
                 alone = {"system": Named(name), "while_down": "continue", "targets": ()}
                 chains.append(self._generated(self.model.model_copy(update=alone), ()))
                 space = chains[-1].space
                 if isinstance(space, GeneratedSpace):
-                    solved.update(layout.node.name for layout in space.plan.islands)
+                    solved.update(node.name for layout in space.plan.islands for node in layout.nodes)
         return chains
 
     def _generated(self, model: Model, subjects: tuple[str, ...]) -> Answers:
@@ -77,11 +81,27 @@ class Chains:
         return Answers(space, self.model.year_hours)
 
 
+def _not_refilled(model: Model) -> list[str]:
+    """Name what a model has whose rates do not follow from single parameters."""
+    fitted = any(
+        shape is not None
+        for unit in model.units.values()
+        for shape in (unit.repair_time_shape, unit.logistic_delay_shape)
+    ) or any(group.takeover_shape is not None or group.outcome_shape is not None for group in model.groups.values())
+    found = {
+        "fixed instants": model.is_scheduled,
+        "common causes": bool(model.common_causes),
+        "load sharing": any(group.load_sharing is not None for group in model.groups.values()),
+        "fitted times": fitted,
+    }
+    return [what for what, there in found.items() if there]
+
+
 def _names(model: Model) -> Iterator[str]:
     """Yield the groups, trains, units and crew pools of the chain of a plant."""
     yield from model.crews
     for layout in () if model.explicit else plan(model, subjects_of(model)).islands:
-        yield layout.node.name
+        yield from (node.name for node in layout.nodes)
         for slot in layout.slots:
             yield from (slot.unit, slot.group, slot.name)
         for path in layout.groups:
@@ -91,19 +111,29 @@ def _names(model: Model) -> Iterator[str]:
 def _prepare(model: Model, subjects: tuple[str, ...]) -> Prepared:
     prepared = prepare(model, subjects)
     for islands in prepared.classes:
-        if len({tuple(_parameters(prepared.plan.islands[island].node)) for island in islands}) > 1:
+        if len({tuple(_parameters(prepared.plan.islands[island].nodes[0])) for island in islands}) > 1:
             return prepare(model, subjects, merge=False)
     return prepared
 
 
+def _first(clock: Clock | None) -> tuple[Factor | None, ...]:
+    return (None,) if clock is None else clock.rates[:1]
+
+
 def _parameters(node: Node) -> Iterator[Hashable]:
     """Yield how the factors of a group and of the trains in it follow from parameters."""
-    factors: list[Factor | None] = [*node.coverage, node.standby_factor, node.outcome_rate, node.takeover_rate]
+    factors: list[Factor | None] = [
+        *node.coverage,
+        node.standby_factor,
+        *_first(node.outcome_clock),
+        *_first(node.takeover),
+    ]
     for entry in node.entries:
         if isinstance(entry, Train):
             yield from _parameters(entry.node)
         else:
-            factors += [entry.failure, entry.start_failure, entry.repair, entry.logistic_delay, entry.capacity]
+            lane = entry.lanes[0]
+            factors += [entry.failure, entry.start_failure, *_first(lane.repair), *_first(lane.delays), entry.capacity]
     for factor in factors:
         given = None if factor is None else factor.quantity
         yield given.expression if given is not None and given.parameters else None

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from fractions import Fraction
 from functools import cached_property
 from typing import get_args
@@ -13,6 +14,7 @@ from markov.evaluation.answers import Answers
 from markov.evaluation.modules import find_modules
 from markov.evaluation.parts import NeedsWhole, Parts
 from markov.evaluation.questions import Question, subjects_of
+from markov.evaluation.scheduled import ScheduledAnswers
 from markov.evaluation.upkeep import CREW_MEASURES, UPKEEP, Upkeep, crew_measure
 from markov.model import Model, Named
 from markov.states import (
@@ -47,6 +49,25 @@ def known_method(name: str | None) -> Method | None:
     if name is not None:
         raise UsageError(f"method {name!r}; expected one of {', '.join(get_args(Method))}")
     return None
+
+
+def answers_of(
+    model: Model, space: StateSpace, times: Sequence[Fraction] = (), method: Method | None = None
+) -> Answers | ScheduledAnswers:
+    """Return the answers of one chain, with fixed instants or without."""
+    levels = {name: share.exact for name, share in model.levels.items()}
+    if not isinstance(space, GeneratedSpace) or space.timetable is None:
+        return Answers(space, model.year_hours, times, method, levels=levels)
+    return ScheduledAnswers(
+        space,
+        model.year_hours,
+        times,
+        method,
+        covers={
+            name: {word for each in test.of for word in (each, *each.split("."))} for name, test in model.tests.items()
+        },
+        levels=levels,
+    )
 
 
 class Solver:
@@ -105,11 +126,11 @@ class Solver:
         return len(self.model.states) if self._prepared is None else self._prepared.most_states
 
     @cached_property
-    def whole(self) -> Answers:
+    def whole(self) -> Answers | ScheduledAnswers:
         """Answers from the chain of the whole plant."""
         space: StateSpace
         space = take(self.model) if self._prepared is None else generate_prepared(self._prepared, limit=self._limit)
-        answers = Answers(space, self.model.year_hours, self._times, self._method)
+        answers = answers_of(self.model, space, self._times, self._method)
         for question in self._expected:
             answers.expect(question)
         return answers
@@ -156,6 +177,8 @@ class Solver:
         """
         if question.measure in CREW_MEASURES:
             return crew_measure(question, self._loading)
+        if question.measure == "hazardous_events_per_year":
+            return self._hazardous_events(question)
         if self.parts is not None:
             try:
                 return self.parts.answer(question)
@@ -165,20 +188,27 @@ class Solver:
             return Upkeep(self.whole).answer(question)
         return self.whole.answer(question)
 
+    def _hazardous_events(self, question: Question) -> Enclosure:
+        """Demands per year that meet a down system."""
+        if self.model.demand is None:
+            raise IllPosed("the spec has no `demand`")
+        down = self.answer(replace(question, measure="steady_state_unavailability"))
+        return down.times(self.model.demand.rate.exact * self.model.year_hours)
+
     @cached_property
     def _loading(self) -> list[Upkeep]:
         """The chains that load crews: those solved, and those of what stands outside of the system and never waits."""
-        chains = [self.whole] if self.parts is None else list(self.parts.answers)
+        chains: list[Answers | ScheduledAnswers] = [self.whole] if self.parts is None else [*self.parts.answers]
         spaces = [each.space for each in chains if isinstance(each.space, GeneratedSpace)]
         serving = frozenset(pool.name for space in spaces for pool in space.pools(None))
-        solved = {layout.node.name for space in spaces for layout in space.plan.islands}
+        solved = {node.name for space in spaces for layout in space.plan.islands for node in layout.nodes}
         for name in island_names(self.model) if self._prepared is not None else ():
             if name in solved:
                 continue
             alone = {"system": Named(name), "while_down": "continue", "targets": ()}
             space = generate(self.model.model_copy(update=alone), limit=self._limit)
-            chains.append(Answers(space, self.model.year_hours))
-            solved.update(layout.node.name for layout in space.plan.islands)
+            chains.append(answers_of(self.model, space))
+            solved.update(node.name for layout in space.plan.islands for node in layout.nodes)
         return [Upkeep(each, serving) for each in chains]
 
     def _must_fit(self) -> None:

@@ -2,15 +2,14 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable, Sequence
 from fractions import Fraction
 
 from markov._version import __version__
-from markov.chain import Enclosure
-from markov.errors import IllPosed, NotReached
-from markov.evaluation.gains import GAINS, gain
+from markov.errors import IllPosed
+from markov.evaluation.price import redundancy_of
 from markov.evaluation.questions import Question, all_questions, question_of, subjects_of
+from markov.evaluation.replies import reply
 from markov.evaluation.solver import Solver
 from markov.evaluation.unsaid import unsaid_choices
 from markov.evaluation.verdicts import judge
@@ -67,7 +66,7 @@ def solve_model(
     results: dict[Question, Result] = {}
     for question in questions:
         progress(f"{question.measure.replace('_', ' ')} of {solver.states:,} states")
-        results[question] = _result(model, solver, question)
+        results[question] = reply(model, solver, question)
     targets = tuple(
         judge(target, results[question_of(model, target)], can_fail=_can_fail(solver, target.of))
         for target in model.targets
@@ -86,34 +85,7 @@ def solve_model(
         targets=targets,
         assumptions=unsaid_choices(model, solver.plan),
         warnings=model.warnings,
-    )
-
-
-def _result(model: Model, solver: Solver, question: Question) -> Result:
-    found, reason, reached = None, None, True
-    try:
-        found = gain(model, solver, question) if question.measure in GAINS else solver.answer(question)
-    except IllPosed as error:
-        reason = error.reason
-    except NotReached as error:
-        reason, reached = f"not reached: {error}", False
-    if found is not None and not math.isfinite(found.value):
-        found, reason, reached = None, "not reached: the value is beyond the range of floating-point numbers", False
-    elif found is not None and found.upper is not None and not math.isfinite(found.upper):
-        found = Enclosure(found.value, None, None, f"{found.method} (no bound from above)")
-    return Result(
-        measure=question.measure,
-        of=question.of,
-        state=question.state,
-        at_hours=question.at_hours,
-        for_hours=question.for_hours,
-        value=None if found is None else found.value,
-        lower=None if found is None else found.lower,
-        upper=None if found is None else found.upper,
-        unit=question.asked.unit,
-        method="none" if found is None else found.method,
-        reason=reason,
-        reached=reached,
+        redundancy=redundancy_of(model, solver, results, progress),
     )
 
 

@@ -9,9 +9,10 @@ from numpy.typing import NDArray
 
 from markov.chain import Enclosure, point
 from markov.errors import IllPosed
-from markov.evaluation.answers import UNIT, Answers
+from markov.evaluation.answers import Answers
 from markov.evaluation.questions import Question
-from markov.states import GeneratedSpace, Pool
+from markov.evaluation.scheduled import ScheduledAnswers
+from markov.states import ArrowKind, Arrows, GeneratedSpace, Pool
 
 Values = NDArray[np.float64]
 
@@ -21,7 +22,7 @@ class Upkeep:
 
     Parameters
     ----------
-    answers : Answers
+    answers : Answers or ScheduledAnswers
     serving : set of str, optional
         Crew pools that count where no pool is named; all that this chain loads if left out.
 
@@ -31,7 +32,7 @@ class Upkeep:
         The chain is written by hand and does not tell units, crews or starts apart.
     """
 
-    def __init__(self, answers: Answers, serving: frozenset[str] | None = None) -> None:
+    def __init__(self, answers: Answers | ScheduledAnswers, serving: frozenset[str] | None = None) -> None:
         if not isinstance(answers.space, GeneratedSpace):
             raise IllPosed("a hand-written chain does not tell units, crews or starts apart")
         self._answers = answers
@@ -42,23 +43,29 @@ class Upkeep:
         """Answer one question of `UPKEEP`."""
         return UPKEEP[question.measure](self, question)
 
-    def _count_rate(self, per_kind: Values) -> Enclosure:
-        """Return the long-run number per hour of something that each arrow counts so many times."""
-        counts = per_kind[self._plant.arrows.kind]
-        counting = counts > 0
-        rates = self._answers.arrow_rates[0][counting] * counts[counting]
-        return self._flow_rate(self._plant.arrows.source[counting], rates)
+    def _count_rate(self, counts: Callable[[Arrows], Values]) -> Enclosure:
+        """Return the long-run number per hour of something that each transition, or jump, counts so many times."""
+        return self._answers.count_rate(counts)
 
-    def _flow_rate(self, source: NDArray[np.int32], rates: Values) -> Enclosure:
-        weights = np.bincount(source, weights=rates, minlength=self._plant.size).astype(np.float64)
-        terms = int(np.bincount(source, minlength=1).max()) if len(source) else 0
-        return self._answers.long_run(lambda pi: pi.weighted(weights, (terms + 3) * UNIT))
+    def _count_kinds(self, per_kind: Values) -> Enclosure:
+        return self._count_rate(lambda arrows: per_kind[arrows.kind])
 
     def _repairs_per_year(self, question: Question) -> Enclosure:
         slots = self._slots(question.of)
         kinds = self._plant.kinds.kinds
-        counts = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])
-        return self._answers.per_year(self._count_rate(counts))
+        counts = np.array([float(_repairs_in(kind, slots)) for kind in kinds])
+        return self._answers.per_year(self._count_kinds(counts))
+
+    def _spares_per_year(self, question: Question) -> Enclosure:
+        """Count spares drawn by the items of a subject; of what stands in the system, where none is named."""
+        plant = self._plant
+        if question.of is None:
+            counts = [float(len(kind.spares)) for kind in plant.kinds.kinds]
+        else:
+            units = {called.rsplit(".", 1)[-1] for _, called in self._slots(question.of)}
+            pools = {name for name, pool in plant.plan.model.spares.items() if set(pool.for_) <= units}
+            counts = [float(sum(name in pools for name in kind.spares)) for kind in plant.kinds.kinds]
+        return self._answers.per_year(self._count_kinds(np.array(counts)))
 
     def _slots(self, of: str | None) -> frozenset[tuple[str, str]]:
         """Return (island, slot) of everything that a subject covers: the system, a group, a unit or a crew pool."""
@@ -72,7 +79,7 @@ class Upkeep:
         counts = np.array(
             [float(sum((kind.island, start) in slots for start in kind.starts)) for kind in self._plant.kinds.kinds]
         )
-        return self._answers.per_year(self._count_rate(counts))
+        return self._answers.per_year(self._count_kinds(counts))
 
     def busy(self, of: str | None) -> Enclosure:
         """Return the long-run mean number of crews at work."""
@@ -85,23 +92,24 @@ class Upkeep:
 
     def calls(self, of: str | None) -> tuple[Enclosure, Enclosure]:
         """Return how many faults per hour call for a crew, and how many of them find none free."""
-        arrows, kinds = self._plant.arrows, self._plant.kinds.kinds
-        rates = self._answers.arrow_rates[0]
+        return self._count_rate(lambda arrows: self._calls(of, arrows)[0]), self._count_rate(
+            lambda arrows: self._calls(of, arrows)[1]
+        )
+
+    def _calls(self, of: str | None, arrows: Arrows) -> tuple[Values, Values]:
+        """Count, for every transition or jump, the faults that call for a crew and those that find none free."""
+        kinds = self._plant.kinds.kinds
         calls = np.zeros(len(arrows))
         refused = np.zeros(len(arrows))
         for pool in self.pools(of):
             slots = self._slots(pool.name)
             calling = self._plant.calling(pool)
-            ended = np.array([float((kind.island, kind.repaired) in slots) for kind in kinds])[arrows.kind]
+            ended = np.array([float(_repairs_in(kind, slots)) for kind in kinds])[arrows.kind]
             before = calling[arrows.source] - ended
             new = np.maximum(calling[arrows.target] - before, 0)
             calls += new
             refused += np.maximum(new - np.maximum(pool.size - before, 0), 0)
-        return self._arrow_flow(rates * calls), self._arrow_flow(rates * refused)
-
-    def _arrow_flow(self, rates: Values) -> Enclosure:
-        counting = rates > 0
-        return self._flow_rate(self._plant.arrows.source[counting], rates[counting])
+        return calls, refused
 
     def pools(self, of: str | None) -> tuple[Pool, ...]:
         """Return the crew pools of this chain that a question concerns."""
@@ -109,12 +117,24 @@ class Upkeep:
         return found if of is not None or self._serving is None else tuple(p for p in found if p.name in self._serving)
 
     def _time_without_redundancy(self, question: Question) -> Enclosure:
-        return self._answers.per_year(self._answers.long_run_share(self._plant.without_redundancy(question.of)))
+        answers, plant, of = self._answers, self._plant, question.of
+        if isinstance(answers, ScheduledAnswers):
+            return answers.per_year(
+                answers.long_run_share(lambda phase: plant.without_redundancy(of, phase).astype(np.float64))
+            )
+        return answers.per_year(answers.long_run_share(plant.without_redundancy(of)))
+
+
+def _repairs_in(kind: ArrowKind, slots: frozenset[tuple[str, str]]) -> int:
+    """Count the repairs that a kind of transition completes among some slots."""
+    done = (kind.repaired, *kind.repairs) if kind.repaired else kind.repairs
+    return sum((kind.island, slot) in slots for slot in done)
 
 
 UPKEEP: dict[str, Callable[[Upkeep, Question], Enclosure]] = {
     "repairs_per_year": Upkeep._repairs_per_year,
     "starts_per_year": Upkeep._starts_per_year,
+    "spares_per_year": Upkeep._spares_per_year,
     "time_without_redundancy": Upkeep._time_without_redundancy,
 }
 

@@ -6,7 +6,7 @@ import json
 from fractions import Fraction
 from typing import Any
 
-from markov.results import Check, Result, Solution, TargetResult
+from markov.results import Check, Figure, Ratio, Redundancy, Result, Solution, TargetResult
 
 
 def solution_json(solution: Solution) -> str:
@@ -27,6 +27,7 @@ def solution_object(solution: Solution) -> dict[str, Any]:
         "year_hours": _number(solution.year_hours),
         "results": [_result(result) for result in solution.results],
         "targets": [_target(target) for target in solution.targets],
+        "redundancy": None if solution.redundancy is None else _redundancy(solution.redundancy),
         "assumptions": list(solution.assumptions),
         "warnings": list(solution.warnings),
     }
@@ -67,6 +68,49 @@ def _result(result: Result) -> dict[str, Any]:
         entry["for_hours"] = _number(result.for_hours)
     if result.reason is not None:
         entry["reason"] = result.reason
+    return entry
+
+
+def _redundancy(redundancy: Redundancy) -> dict[str, Any]:
+    return {
+        "at_hours": _number(redundancy.mission_hours),
+        "over_single_unit": _ratio(redundancy.over_single_unit),
+        "over_independent_blocks": _ratio(redundancy.over_independent_blocks),
+        "over_perfect_blocks": _ratio(redundancy.over_perfect_blocks),
+        "effects": [
+            {
+                "dependence": effect.dependence,
+                "where": list(effect.where),
+                "factor": _ratio(effect.factor),
+                "left": _ratio(effect.left),
+            }
+            for effect in redundancy.effects
+        ],
+        "cause": {"long_run": redundancy.long_run_cause, "mission": redundancy.mission_cause},
+        "costs": [
+            {
+                "name": cost.name,
+                "unit": cost.unit,
+                "system": _figure(cost.system),
+                "plain": _figure(cost.plain),
+                "note": cost.note,
+            }
+            for cost in redundancy.costs
+        ],
+    }
+
+
+def _ratio(ratio: Ratio) -> dict[str, Any]:
+    return {
+        "long_run": _figure(ratio.long_run),
+        "mission": None if ratio.mission is None else _figure(ratio.mission),
+    }
+
+
+def _figure(figure: Figure) -> dict[str, Any]:
+    entry: dict[str, Any] = {"value": figure.value, "lower": figure.lower, "upper": figure.upper}
+    if figure.reason is not None:
+        entry["reason"] = figure.reason
     return entry
 
 

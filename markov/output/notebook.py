@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from html import escape
 
+from markov.output.redundancy import HEADING, redundancy_grids
 from markov.output.wording import (
     CAUTIONS,
     bound_words,
@@ -39,6 +40,13 @@ def solution_html(solution: Solution) -> str:
         parts.append(_table(("target", "measure", "limit", "value", "verdict", "why"), rows))
     results = [(_words(result), _value(result), result.reason or bound_words(result)) for result in solution.results]
     parts.append(_table(("measure", "value", "bound"), results))
+    if solution.redundancy is not None:
+        parts.append(f"<h5>{HEADING}</h5>")
+        for grid in redundancy_grids(solution.redundancy):
+            if grid.rows:
+                parts.append(_table(grid.headings, grid.rows))
+            if grid.below:
+                parts.append(f"<p>{escape(grid.below)}</p>")
     for heading, entries in (
         ("Choices left unsaid", solution.assumptions),
         ("Warnings", solution.warnings),

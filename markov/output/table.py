@@ -9,6 +9,7 @@ from rich.padding import Padding
 from rich.table import Table
 from rich.text import Text
 
+from markov.output.redundancy import HEADING, Grid, listed_measures, redundancy_grids
 from markov.output.wording import (
     CAUTIONS,
     bound_words,
@@ -58,7 +59,9 @@ def print_solution(solution: Solution, console: Console) -> None:
         console.print(_target_table(solution.targets))
     _heading(console, "Results")
     asked = {target.result for target in solution.targets}
-    console.print(_result_table(tuple(each for each in solution.results if each in asked or _matters(each))))
+    elsewhere = listed_measures(solution.redundancy)
+    shown = [each for each in solution.results if each in asked or (_matters(each) and not _is_in(each, elsewhere))]
+    console.print(_result_table(tuple(shown)))
     console.print(
         Padding(
             "The last column is proven: the exact answer of the model is no farther from the value, relative to it.",
@@ -66,6 +69,12 @@ def print_solution(solution: Solution, console: Console) -> None:
         ),
         style="dim",
     )
+    if solution.redundancy is not None:
+        _heading(console, HEADING)
+        for number, grid in enumerate(redundancy_grids(solution.redundancy)):
+            if number:
+                console.print()
+            _print_grid(console, grid)
     _list(console, "Choices left unsaid", solution.assumptions)
     _list(console, "Warnings", solution.warnings)
     _list(console, "Cautions", CAUTIONS)
@@ -133,6 +142,23 @@ def _result_table(results: tuple[Result, ...]) -> Table:
             Text(bound_words(result) if result.reason is None else result.reason),
         )
     return table
+
+
+def _is_in(result: Result, measures: frozenset[str]) -> bool:
+    """Tell whether a result stands in another section already."""
+    return result.of is None and result.at_hours is None and result.measure in measures
+
+
+def _print_grid(console: Console, grid: Grid) -> None:
+    if grid.rows:
+        table = _plain_table("", *grid.headings)
+        for column in table.columns[2:]:
+            column.justify = "right"
+        for row in grid.rows:
+            table.add_row("", *(Text(cell) for cell in row))
+        console.print(table)
+    if grid.below:
+        console.print(Padding(Text(grid.below), (0, 0, 0, 2)), style="dim")
 
 
 def _plain_table(*headings: str) -> Table:

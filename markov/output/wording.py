@@ -6,7 +6,7 @@ from fractions import Fraction
 from math import ceil
 
 from markov.measures import MEASURES
-from markov.results import Result
+from markov.results import Figure, Result
 
 #: Printed with every verdict.  What they say is common practice of the trade.
 CAUTIONS = (
@@ -33,6 +33,22 @@ def measure_words(measure: str) -> str:
     """Return a measure's name as words: ``steady-state availability``."""
     words = measure.replace("_", " ").replace("steady state", "steady-state")
     return words.replace("pfd", "PFD").replace("pfh", "PFH")
+
+
+#: Dependences whose fixed name says too little.
+_DEPENDENCES = {
+    "test_coverage": "imperfect coverage of tests",
+    "test_duration": "duration of tests",
+    "left_out_after_tests": "units left out of service after tests",
+    "harm_by_tests": "harm by tests",
+    "repair_out_of_service": "repair that stops the group",
+    "while_down": "what units do while the system is down",
+}
+
+
+def dependence_words(dependence: str) -> str:
+    """Return the name of a dependence as words: ``imperfect coverage``."""
+    return _DEPENDENCES.get(dependence, dependence.replace("_", " "))
 
 
 def unit_words(unit: str) -> str:
@@ -79,7 +95,7 @@ def _exponent(value: float) -> int:
     return int(f"{value:.0e}".split("e")[1])
 
 
-def bound_words(result: Result) -> str:
+def bound_words(result: Result | Figure) -> str:
     """Return how far the exact answer can be from the value at most, relative to it, rounded up."""
     if result.value is None:
         return ""

@@ -127,7 +127,7 @@ def test_an_estimate_without_a_bound_decides_nothing(program: Program, monkeypat
     def estimated(**given: object) -> Result:
         return Result(**{**given, "lower": None, "upper": None, "method": "estimate"})
 
-    monkeypatch.setattr("markov.evaluation.solving.Result", estimated)
+    monkeypatch.setattr("markov.evaluation.replies.Result", estimated)
     found = program.solve(THIRDS + asking("unreliability", "at_most: 0.9"))
     assert (found.status, found.verdicts) == (3, {"T": "undecided"})
     assert "estimate" in found.json["targets"][0]["why"]

@@ -18,22 +18,32 @@ DIGITS = 20
 
 
 @dataclass(frozen=True)
+class Term:
+    """Something that is asked of the program, and how often it counts."""
+
+    measure: str
+    of: str | None
+    at: str | None
+    state: str | None
+    times: Fraction
+
+
+@dataclass(frozen=True)
 class Check:
     """One published value: what is asked of which model, and what has to come out."""
 
     id: str
     asks: str
-    measure: str
-    of: str | None
-    at: str | None
-    state: str | None
+    terms: tuple[Term, ...]
+    plus: Fraction
     unit: str
     published: str
     is_printed: bool
+    formula: str | None
+    formula_off_by: str | None
     exact: str
     source: str
     source_status: str
-    share_not_waiting_of: int | None
     solves_for: str | None
     to_reach: str | None
 
@@ -43,6 +53,11 @@ class Check:
         given = Decimal(self.exact)
         half = Fraction(Decimal(5).scaleb(given.adjusted() - DIGITS))
         return Fraction(given) - half, Fraction(given) + half
+
+    @property
+    def is_counted(self) -> bool:
+        """Whether the value is the least whole number that reaches a level."""
+        return self.solves_for is not None and self.exact.isdecimal()
 
 
 @dataclass(frozen=True)
@@ -56,15 +71,34 @@ class Published:
     checks: tuple[Check, ...]
 
 
-_NEEDED = ("id", "asks", "measure", "exact", "source", "source_status")
-_OPTIONAL = ("of", "at", "state", "share_not_waiting_of", "solves_for", "to_reach")
+_NEEDED = ("id", "asks", "exact", "source", "source_status")
+_OPTIONAL = ("formula", "formula_off_by", "solves_for", "to_reach")
+_TERM = ("measure", "of", "at", "state", "times")
+
+
+def _term(entry: dict[str, Any]) -> Term:
+    numerator, _, denominator = entry.get("times", "1").partition("/")
+    times = Fraction(numerator) / Fraction(denominator or 1)
+    return Term(entry["measure"], entry.get("of"), entry.get("at"), entry.get("state"), times)
+
+
+def _terms(entry: dict[str, Any]) -> tuple[Term, ...]:
+    if "sum" not in entry:
+        return (_term(entry),)
+    assert not set(entry) & set(_TERM), f"{entry['id']}: a sum stands in place of what is asked"
+    unknown = {key for each in entry["sum"] for key in each} - set(_TERM)
+    assert not unknown, f"{entry['id']}: unknown keys {unknown}"
+    return tuple(map(_term, entry["sum"]))
 
 
 def _check(entry: dict[str, Any]) -> Check:
-    unknown = set(entry) - set(_NEEDED) - set(_OPTIONAL) - {"in", "printed", "evaluated", "note"}
-    assert not unknown, f"{entry['id']}: unknown keys {unknown}"
+    known = {*_NEEDED, *_OPTIONAL, *_TERM, "sum", "plus", "in", "printed", "evaluated", "note"}
+    assert set(entry) <= known, f"{entry['id']}: unknown keys {set(entry) - known}"
     assert ("printed" in entry) != ("evaluated" in entry), f"{entry['id']}: one of printed, evaluated"
+    assert ("formula" in entry) == ("formula_off_by" in entry), f"{entry['id']}: a formula and what it is off by"
     return Check(
+        terms=_terms(entry),
+        plus=Fraction(entry.get("plus", "0")),
         unit=entry["in"],
         published=entry.get("printed", entry.get("evaluated")),
         is_printed="printed" in entry,

@@ -8,7 +8,7 @@ from functools import cache
 
 import markov
 from markov import MEASURES, spec
-from tests.published.checks import Check, Published
+from tests.published.checks import Check, Published, Term
 
 #: Unit of measure of a limit in a target, by what the limit of the measure is.
 LIMIT_UNITS = {"share": "", "number": "", "time": " h", "rate": " /h"}
@@ -29,16 +29,29 @@ def _decimal(value: Fraction) -> str:
     return format(_LONG.divide(Decimal(value.numerator), Decimal(value.denominator)), "e")
 
 
-def _target(check: Check, name: str, value: Fraction, year_hours: Fraction) -> str:
-    """Return a target whose limit is `value`, in the unit of measure of the source."""
-    measure = MEASURES[check.measure]
-    direction = "at_least"
-    if check.share_not_waiting_of is not None:
-        value, direction = (1 - value) * check.share_not_waiting_of, "at_most"
-    limit = _decimal(value / scale(measure.unit, check.unit, year_hours)) + LIMIT_UNITS[measure.limit]
-    asked = {"of": check.of, "at": check.at, "state": check.state}
+def _line(name: str, term: Term, direction: str, limit: Fraction) -> str:
+    """Return a target on what a term asks for; its limit is in the unit of measure of the program."""
+    measure = MEASURES[term.measure]
+    asked = {"of": term.of, "at": term.at, "state": term.state}
     said = "".join(f"{key}: {given}, " for key, given in asked.items() if given is not None)
-    return f"  - {{id: {name}, measure: {check.measure}, {said}{direction}: {limit}}}\n"
+    written = _decimal(limit) + LIMIT_UNITS[measure.limit]
+    return f"  - {{id: {name}, measure: {term.measure}, {said}{direction}: {written}}}\n"
+
+
+def _beside(check: Check, name: str, value: Fraction, year_hours: Fraction) -> str:
+    """Return a target whose limit is `value`, in the unit of measure of the source."""
+    (term,) = check.terms
+    limit = (value - check.plus) / term.times / scale(MEASURES[term.measure].unit, check.unit, year_hours)
+    return _line(name, term, "at_least" if term.times > 0 else "at_most", limit)
+
+
+def _lines(check: Check, year_hours: Fraction) -> list[str]:
+    asked = [_line(f"{check.id} {number}", term, "at_least", Fraction(0)) for number, term in enumerate(check.terms)]
+    if len(check.terms) > 1:
+        return asked
+    level = Fraction(check.to_reach if check.to_reach is not None else check.exact)
+    below = _beside(check, f"{check.id} below", level * (1 - CLOSE), year_hours)
+    return [*asked, below, _beside(check, f"{check.id} above", level * (1 + CLOSE), year_hours)]
 
 
 def _year(text: str) -> Fraction:
@@ -47,33 +60,31 @@ def _year(text: str) -> Fraction:
 
 @cache
 def solve(model: Published) -> markov.Solution:
-    """Solve the spec of a model, with two targets for each check: just below its exact value and just above."""
+    """Solve the spec of a model, with a target for each term, and two just beside the exact value of each check."""
     text = model.spec
     if model.is_own_text:
-        year, lines = _year(text), []
-        for check in model.checks:
-            level = Fraction(check.to_reach if check.to_reach is not None else check.exact)
-            lines.append(_target(check, f"{check.id} below", level * (1 - CLOSE), year))
-            lines.append(_target(check, f"{check.id} above", level * (1 + CLOSE), year))
-        text += "targets:\n" + "".join(lines)
+        year = _year(text)
+        text += "targets:\n" + "".join(line for check in model.checks for line in _lines(check, year))
     return markov.solve(spec.read_text(text, name=model.name))
 
 
-def result_of(model: Published, check: Check) -> markov.Result:
-    """Return what the program answers to a check, in its own unit of measure."""
+def results_of(model: Published, check: Check) -> tuple[markov.Result, ...]:
+    """Return what the program answers to the terms of a check, in its own units of measure."""
     solution = solve(model)
     if not model.is_own_text:
-        return solution.result(check.measure, of=check.of)
-    return next(target.result for target in solution.targets if target.id == f"{check.id} below")
+        return tuple(solution.result(term.measure, of=term.of) for term in check.terms)
+    results = {target.id: target.result for target in solution.targets}
+    return tuple(results[f"{check.id} {number}"] for number in range(len(check.terms)))
 
 
 def bounds(model: Published, check: Check) -> tuple[Fraction, Fraction]:
     """Return the bounds on the answer, in the unit of measure of the source."""
-    result = result_of(model, check)
-    assert result.reason is None, result.reason
-    assert result.is_proven, result.method
-    factor = scale(result.unit, check.unit, solve(model).year_hours)
-    lower, upper = Fraction(result.lower) * factor, Fraction(result.upper) * factor
-    if check.share_not_waiting_of is not None:
-        return 1 - upper / check.share_not_waiting_of, 1 - lower / check.share_not_waiting_of
+    lower = upper = check.plus
+    for term, result in zip(check.terms, results_of(model, check), strict=True):
+        assert result.reason is None, result.reason
+        assert result.is_proven, result.method
+        alone = len(check.terms) == 1
+        factor = term.times * (scale(result.unit, check.unit, solve(model).year_hours) if alone else 1)
+        ends = sorted((Fraction(result.lower) * factor, Fraction(result.upper) * factor))
+        lower, upper = lower + ends[0], upper + ends[1]
     return lower, upper
