@@ -87,10 +87,9 @@ class Answers:
     @cached_property
     def generator(self) -> Generator:
         """The rates of the chain, parallel transitions added."""
-        moving = self.space.arrows.moving
         high, low = self.arrow_rates
         arrows = self.space.arrows
-        return aggregate(self.space.size, arrows.source[moving], arrows.target[moving], high[moving], low[moving])
+        return aggregate(self.space.size, arrows.source, arrows.target, high, low)
 
     @cached_property
     def arrow_rates(self) -> tuple[Values, Values]:
@@ -368,8 +367,7 @@ class Answers:
         return self.long_run_share(self._fails_to_act(question.of))
 
     def _pfh(self, question: Question) -> Enclosure:
-        fails = self._fails_to_act(question.of)
-        passages = flow(self.generator, ~fails, fails)
+        passages = flow(self.generator, self.up(question.of), self._fails_to_act(question.of))
         return self.long_run(lambda pi: pi.weighted(passages))
 
     def _spurious_failures_per_year(self, question: Question) -> Enclosure:

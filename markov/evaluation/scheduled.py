@@ -4,8 +4,8 @@ Values at an instant are those just after it; ``(0, t]`` includes what happens a
 the cycle of the periodic limit; without a cycle it is that of the last phase, which goes on for ever.  A system that is
 up before an instant and down after it, by the criterion of the phase that follows, has failed at that instant.
 
-`pfd_average`, `pfd_peak` and `pfh` leave states out in which the system acts needlessly: `pfh` counts entries into the
-states that are down without acting.
+`pfd_average`, `pfd_peak` and `pfh` leave states out in which the system acts needlessly: `pfh` counts passages from up
+to the states that are down without acting.
 """
 
 from __future__ import annotations
@@ -443,9 +443,7 @@ class ScheduledAnswers:
     def _pfh(self, question: Question) -> Enclosure:
         of = question.of
         return self.long_run_rate(
-            self._entries(
-                lambda phase: ~self._dangerous_flags(of, phase), lambda phase: self._dangerous_flags(of, phase)
-            )
+            self._entries(lambda phase: self.up(of, phase), lambda phase: self._dangerous_flags(of, phase))
         )
 
     def _spurious_failures(self, question: Question) -> Enclosure:

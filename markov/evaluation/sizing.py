@@ -6,6 +6,7 @@ from fractions import Fraction
 
 from markov._version import __version__
 from markov.evaluation.answers import Answers
+from markov.evaluation.fits import fitted_times
 from markov.evaluation.modules import find_modules
 from markov.evaluation.questions import subjects_of
 from markov.evaluation.solver import WHOLE_UP_TO
@@ -34,7 +35,7 @@ def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
         sha256=model.sha256,
         version=__version__,
         size=size,
-        assumptions=unsaid_choices(model, plan),
+        assumptions=(*unsaid_choices(model, plan), *fitted_times(model)),
         warnings=model.warnings,
     )
 

@@ -7,6 +7,7 @@ from fractions import Fraction
 
 from markov._version import __version__
 from markov.errors import IllPosed
+from markov.evaluation.fits import fitted_times
 from markov.evaluation.price import redundancy_of
 from markov.evaluation.questions import Question, all_questions, question_of, subjects_of
 from markov.evaluation.replies import reply
@@ -83,7 +84,7 @@ def solve_model(
         year_hours=model.year_hours,
         results=tuple(results.values()),
         targets=targets,
-        assumptions=unsaid_choices(model, solver.plan),
+        assumptions=(*unsaid_choices(model, solver.plan), *fitted_times(model)),
         warnings=model.warnings,
         redundancy=redundancy_of(model, solver, results, progress),
     )

@@ -343,7 +343,7 @@ class _Known:
         columns = x[:, first[order]]
         numbers = np.empty(len(keys), np.int64)
         numbers[order] = np.arange(self._size, self._size + len(keys))
-        merged = np.concatenate((self._sorted, keys)) if len(self._sorted) else keys
+        merged: Keys = np.concatenate((self._sorted, keys)) if len(self._sorted) else keys  # type: ignore[assignment]
         place = np.argsort(merged, kind="stable")
         self._sorted = merged[place]
         self._numbers = np.concatenate((self._numbers, numbers))[place]

@@ -268,8 +268,11 @@ def _lane(
     if given is not None and given.repair_time is not None:
         at_once = given.repair_time.is_zero
         repair = _repair_of_mode(kind, unit, named)
+    if at_once:
+        stock = -1  # renewed where it stands
+    repaired = repair is not None
     if stock >= 0:
-        repair, at_once = None, False
+        repair = None
     delays = None
     if (repair is not None or stock >= 0) and kind.logistic_delay is not None:
         delays = clock_of(
@@ -296,7 +299,7 @@ def _lane(
             shape=pool.swap_time_shape,
         )
         rows = drawing.ordering[drawing.stock_names[stock]]
-        if pool.order == "when_failed" and not kind.repairable:
+        if pool.order == "when_failed" and not repaired:
             ordering = Ordering(rows.counted, rows.orders[0], pool.batch, rows.most)
     deferred = node.release != "at_once" and (repair is not None or stock >= 0)
     return Lane(

@@ -95,7 +95,7 @@ class Repairs:
         """Take note of a fault that has just become known."""
         stock = self.stock_of.get(item.kind.name)
         if stock is not None and stock.plan.when_failed:
-            self._order(stock, item.kind)
+            self._order(stock, item)
         if stock is None and self._repair(item.kind, item.mode) is None:
             return
         if item.group is not None and item.group.plan.repair_when != "at_once":
@@ -296,7 +296,7 @@ class Repairs:
                 drawn = True
                 self.count("spares", item)
                 if not stock.plan.when_failed:
-                    self._order(stock, item.kind)
+                    self._order(stock, item)
                 repair = self._repair(item.kind, item.mode)
                 if repair is not None:
                     self._ask_crew(Job(item.kind, repair, None, stock, self.clock.now))
@@ -308,9 +308,9 @@ class Repairs:
                     self._in_place(item)
         return drawn
 
-    def _order(self, stock: Stock, kind: Kind) -> None:
+    def _order(self, stock: Stock, item: Item) -> None:
         """Count a draw or a fault; every so many bring an order.  What is repaired comes back instead."""
-        if kind.repair is not None:
+        if self._repair(item.kind, item.mode) is not None:
             return
         stock.counted += 1
         if stock.counted % stock.plan.batch == 0:
