@@ -3,9 +3,15 @@
 Read the difference before committing it: each changed digit needs a reason.
 """
 
+from __future__ import annotations
+
 import re
 import sys
 from pathlib import Path
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    import markov
 
 HERE = Path(__file__).resolve().parent
 ROOT = HERE.parent.parent
@@ -17,16 +23,23 @@ def masked(text: str) -> str:
     return re.sub(r"markov \d\S*", "markov …", re.sub(r"± \S+", "± …", text))
 
 
-def told(spec: Path) -> str:
-    """Return what solving a spec prints, masked."""
-    import markov
+def told(solution: markov.Solution) -> str:
+    """Return what is printed of a solution, masked."""
     from markov.output.table import solution_text
 
-    lines = masked(solution_text(markov.solve(spec))).splitlines()
+    lines = masked(solution_text(solution)).splitlines()
     return "\n".join(line.rstrip() for line in lines) + "\n"
+
+
+def renew() -> None:
+    """Write the expected output of every example."""
+    import markov
+
+    paths = sorted((ROOT / "specs").glob("*.yaml"))
+    for path in paths:
+        (EXPECTED / f"{path.stem}.txt").write_text(told(markov.solve(path)), encoding="utf-8")
 
 
 if __name__ == "__main__":
     sys.path.insert(0, str(ROOT))
-    for path in sorted((ROOT / "specs").glob("*.yaml")):
-        (EXPECTED / f"{path.stem}.txt").write_text(told(path), encoding="utf-8")
+    renew()
