@@ -168,16 +168,16 @@ class Answers:
         passages = self._failure_flow(of)
         return self.long_run(lambda pi: pi.weighted(passages))
 
-    def count_rate(self, counts: Callable[[Arrows], Values]) -> Enclosure:
+    def count_rate(self, counts: Callable[[Arrows, int], Values]) -> Enclosure:
         """Return the long-run number per hour of something that each transition counts so many times.
 
         Parameters
         ----------
         counts : callable
-            Transitions -> how many times each counts, shape (a,).
+            Transitions and their phase -> how many times each counts, shape (a,).
         """
         arrows = self.space.arrows
-        number = counts(arrows)
+        number = counts(arrows, 0)
         counting = number > 0
         source = arrows.source[counting]
         rates = self.arrow_rates[0][counting] * number[counting]

@@ -35,9 +35,17 @@ def gain(model: Model, solver: Solver, question: Question) -> Enclosure:
     if not solver.can_fail(None) or system.upper == 0:
         raise IllPosed("no down state can be reached, so there is nothing to compare with")
     single = question.measure == "gain_over_single_unit"
+    if not single and _is_one_block(solver):
+        return replace(system / system, method=f"one group alone; {system.method}")
     rival = single_units if single else independent_blocks
     method = "ratio of two chains" if single else "groups solved alone, combined through the structure"
     return replace(rival(model, question.at_hours) / system, method=f"{method}; {system.method}")
+
+
+def _is_one_block(solver: Solver) -> bool:
+    """Tell whether the plant is a single group that no other one affects: it is its own independent block."""
+    plan = solver.plan
+    return plan is not None and len(plan.islands) == 1 and len(plan.islands[0].nodes) == 1
 
 
 def single_units(model: Model, at: Fraction | None) -> Enclosure:

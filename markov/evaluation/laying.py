@@ -125,6 +125,12 @@ class Schedule:
         self.final = table.final
 
     @property
+    def phase_after(self) -> tuple[int, ...]:
+        """Of each instant, a phase that it leads into."""
+        found = {each.instant: each.after for each in (*self.prefix, *self.cycle) if each.instant is not None}
+        return tuple(found.get(number, 0) for number in range(len(self.space.jumps)))
+
+    @property
     def period(self) -> Fraction:
         """Length of the cycle in hours."""
         return sum((each.hours for each in self.cycle), Fraction(0))

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Protocol
 
 import numpy as np
@@ -39,13 +39,18 @@ class Limit:
     stretches: tuple[Stretch, ...]
     settled: Vector | None
     phase: int
+    _means: dict[tuple[float, bytes], Enclosure] = field(default_factory=dict, compare=False, repr=False)
 
     def mean(self, values: Callable[[int], Values], error: float) -> Enclosure:
-        """Return the mean of a number that each state has in a phase."""
-        if self.periodic is not None:
-            return self.periodic.mean([values(each.regime) for each in self.stretches], error)
-        assert self.settled is not None
-        return self.settled.weighted(values(self.phase), error)
+        """Return the mean of a number that each state has in a phase; several measures ask for the same ones."""
+        if self.periodic is None:
+            assert self.settled is not None
+            return self.settled.weighted(values(self.phase), error)
+        found = [values(each.regime) for each in self.stretches]
+        asked = error, b"".join(np.ascontiguousarray(each).tobytes() for each in found)
+        if asked not in self._means:
+            self._means[asked] = self.periodic.mean(found, error)
+        return self._means[asked]
 
     def rate(self, earnings: Earnings) -> Enclosure:
         """Return what is earned per hour, one reward."""

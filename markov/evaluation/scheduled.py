@@ -200,19 +200,19 @@ class ScheduledAnswers:
         """Return what is earned per hour in the long run, one reward."""
         return self._in_the_end(lambda limit: limit.rate(earnings))
 
-    def count_rate(self, counts: Callable[[Arrows], Values]) -> Enclosure:
+    def count_rate(self, counts: Callable[[Arrows, int], Values]) -> Enclosure:
         """Return the long-run number per hour of something that each transition and jump counts so many times.
 
         Parameters
         ----------
         counts : callable
-            Transitions, or jumps -> how many times each counts, shape (a,).
+            Transitions, or jumps, and the phase that they are in or lead into -> how often each counts, shape (a,).
         """
         n = self.space.size
         widest = [1]
 
-        def summed(arrows: Arrows, rates: Values) -> Values:
-            number = counts(arrows)
+        def summed(arrows: Arrows, rates: Values, phase: int) -> Values:
+            number = counts(arrows, phase)
             counting = number > 0
             source = arrows.source[counting]
             widest.append(int(np.bincount(source, minlength=1).max(initial=0)))
@@ -220,12 +220,14 @@ class ScheduledAnswers:
             return weights.astype(np.float64)[:, None]
 
         during = [
-            summed(regime.arrows, rates[0])
-            for regime, rates in zip(self.space.regimes, self.schedule.arrow_rates, strict=True)
+            summed(regime.arrows, rates[0], phase)
+            for phase, (regime, rates) in enumerate(zip(self.space.regimes, self.schedule.arrow_rates, strict=True))
         ]
         at = [
-            summed(arrows, chances[0])
-            for arrows, chances in zip(self.space.jumps, self.schedule.jump_chances, strict=True)
+            summed(arrows, chances[0], phase)
+            for arrows, chances, phase in zip(
+                self.space.jumps, self.schedule.jump_chances, self.schedule.phase_after, strict=True
+            )
         ]
         nothing = np.zeros((n, 1))
         return self.long_run_rate(

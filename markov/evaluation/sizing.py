@@ -2,14 +2,11 @@
 
 from __future__ import annotations
 
-from fractions import Fraction
-
 from markov._version import __version__
-from markov.evaluation.answers import Answers
 from markov.evaluation.fits import fitted_times
 from markov.evaluation.modules import find_modules
 from markov.evaluation.questions import subjects_of
-from markov.evaluation.solver import WHOLE_UP_TO
+from markov.evaluation.solver import WHOLE_UP_TO, answers_of
 from markov.evaluation.unsaid import unsaid_choices
 from markov.model import Model
 from markov.results import Check, Size
@@ -24,7 +21,7 @@ def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
     """
     plan = None
     if model.explicit:
-        size = _size_of(take(model))
+        size = _size_of(model, take(model))
     else:
         prepared = prepare(model, subjects_of(model))
         plan = prepared.plan
@@ -40,15 +37,15 @@ def check_model(model: Model, *, limit: int = STATE_LIMIT) -> Check:
     )
 
 
-def _size_of(space: StateSpace) -> Size:
-    arrows = Answers(space, Fraction(1)).arrow_count
+def _size_of(model: Model, space: StateSpace) -> Size:
+    arrows = answers_of(model, space).arrow_count
     raw = space.raw_size if isinstance(space, GeneratedSpace) else space.size
     return Size(space.size, arrows, raw, 1, True, _memory(space.size, len(space.arrows)), True)
 
 
 def _predicted(model: Model, prepared: Prepared, limit: int) -> Size:
     if prepared.most_states <= WHOLE_UP_TO:
-        return _size_of(generate_prepared(prepared, limit=limit))
+        return _size_of(model, generate_prepared(prepared, limit=limit))
     modules = find_modules(model, prepared.plan)
     if modules is None:
         states, arrows = prepared.most_states, prepared.most_arrows

@@ -43,12 +43,12 @@ class Upkeep:
         """Answer one question of `UPKEEP`."""
         return UPKEEP[question.measure](self, question)
 
-    def _count_rate(self, counts: Callable[[Arrows], Values]) -> Enclosure:
+    def _count_rate(self, counts: Callable[[Arrows, int], Values]) -> Enclosure:
         """Return the long-run number per hour of something that each transition, or jump, counts so many times."""
         return self._answers.count_rate(counts)
 
     def _count_kinds(self, per_kind: Values) -> Enclosure:
-        return self._count_rate(lambda arrows: per_kind[arrows.kind])
+        return self._count_rate(lambda arrows, _: per_kind[arrows.kind])
 
     def _repairs_per_year(self, question: Question) -> Enclosure:
         slots = self._slots(question.of)
@@ -83,22 +83,32 @@ class Upkeep:
 
     def busy(self, of: str | None) -> Enclosure:
         """Return the long-run mean number of crews at work."""
-        return self._answers.mean_of(np.sum([self._plant.crews_at_work(pool) for pool in self.pools(of)], axis=0), None)
+        return self._mean(lambda phase: self._at_work(of, phase))
+
+    def _at_work(self, of: str | None, phase: int) -> Values:
+        return np.asarray(np.sum([self._plant.crews_at_work(pool, phase) for pool in self.pools(of)], axis=0))
+
+    def _mean(self, values: Callable[[int], Values]) -> Enclosure:
+        """Return the long-run mean of a number that each state has in a phase."""
+        if isinstance(self._answers, ScheduledAnswers):
+            return self._answers.mean_of(values, None)
+        return self._answers.mean_of(values(0), None)
 
     def waiting(self, of: str | None) -> Enclosure:
         """Return the long-run mean number of items that wait for a crew."""
-        waiting = [self._plant.calling(pool) - self._plant.crews_at_work(pool) for pool in self.pools(of)]
-        return self._answers.mean_of(np.sum(waiting, axis=0), None)
+        calling: Values = np.sum([self._plant.calling(pool) for pool in self.pools(of)], axis=0)
+        return self._mean(lambda phase: calling - self._at_work(of, phase))
 
     def calls(self, of: str | None) -> tuple[Enclosure, Enclosure]:
         """Return how many faults per hour call for a crew, and how many of them find none free."""
-        return self._count_rate(lambda arrows: self._calls(of, arrows)[0]), self._count_rate(
-            lambda arrows: self._calls(of, arrows)[1]
+        return self._count_rate(lambda arrows, phase: self._calls(of, arrows, phase)[0]), self._count_rate(
+            lambda arrows, phase: self._calls(of, arrows, phase)[1]
         )
 
-    def _calls(self, of: str | None, arrows: Arrows) -> tuple[Values, Values]:
+    def _calls(self, of: str | None, arrows: Arrows, phase: int) -> tuple[Values, Values]:
         """Count, for every transition or jump, the faults that call for a crew and those that find none free."""
         kinds = self._plant.kinds.kinds
+        phases = self._plant.plan.model.phases
         calls = np.zeros(len(arrows))
         refused = np.zeros(len(arrows))
         for pool in self.pools(of):
@@ -107,8 +117,9 @@ class Upkeep:
             ended = np.array([float(_repairs_in(kind, slots)) for kind in kinds])[arrows.kind]
             before = calling[arrows.source] - ended
             new = np.maximum(calling[arrows.target] - before, 0)
+            size = 0 if phases and not phases[phase].repair else pool.size
             calls += new
-            refused += np.maximum(new - np.maximum(pool.size - before, 0), 0)
+            refused += np.maximum(new - np.maximum(size - before, 0), 0)
         return calls, refused
 
     def pools(self, of: str | None) -> tuple[Pool, ...]:

@@ -242,13 +242,18 @@ class GeneratedSpace:
         every = (*self.plan.pools, *self.plan.free_pools, *self.plan.desk_pools)
         return tuple(pool for pool in every if subject in (None, pool.name))
 
-    def crews_at_work(self, pool: Pool) -> Values:
-        """Count crews at work, shape (n,)."""
+    def crews_at_work(self, pool: Pool, phase: int = 0) -> Values:
+        """Count crews at work in one phase, shape (n,); none where the phase, or a restoration, lets them rest."""
+        model = self.plan.model
+        if model.phases and not model.phases[phase].repair:
+            return np.zeros(self.size)
         if pool in self.plan.pools:
-            return self.desk.busy(pool, self.columns).astype(np.float64)
-        if pool in self.plan.desk_pools:
-            return self._lanes_count(pool, lambda lane, x: total(x, lane.serve))
-        return self.calling(pool)
+            busy = self.desk.busy(pool, self.columns).astype(np.float64)
+        elif pool in self.plan.desk_pools:
+            busy = self._lanes_count(pool, lambda lane, x: total(x, lane.serve))
+        else:
+            busy = self.calling(pool)
+        return busy if model.restoration is None else np.where(self.regimes[phase].up(None), busy, 0.0)
 
     def calling(self, pool: Pool) -> Values:
         """Count items that wait for a crew or have one, shape (n,)."""

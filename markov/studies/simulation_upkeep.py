@@ -207,6 +207,7 @@ class Repairs:
     def assign(self) -> None:
         """Give crews to repairs, then let those go on that have one."""
         for pool in self.pools:
+            free = 0 if self.halted else pool.plan.size - sum(job.answered for job in pool.jobs)
             if not self.halted:
                 self._assign(pool)
             for job in pool.jobs:
@@ -214,8 +215,9 @@ class Repairs:
                 if not job.answered:
                     job.answered = True
                     self.count_crew("calls", pool.plan.name)
-                    if not job.crewed:
+                    if free <= 0:  # none is free, even where a more urgent repair then takes one away
                         self.count_crew("waits", pool.plan.name)
+                    free -= 1
             pool.busy = 0 if self.halted else sum(job.crewed for job in pool.jobs)
         for job in self.own_crew:
             self._let_run(job)

@@ -263,7 +263,6 @@ def test_only_the_visit_keeps_the_telescope_going() -> None:
     assert value(solved(keys), "steady_state_availability") == 0.0
 
 
-@pytest.mark.xfail(strict=True, reason="crews that a phase lets pause are counted as at work")
 def test_nobody_is_at_work_at_the_telescope_in_winter() -> None:
     # A repair takes a technician 3 d of work, whatever comes between.
     keys = mapping("polar_telescope_cooling")
