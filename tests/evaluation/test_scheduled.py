@@ -158,7 +158,7 @@ def test_instants_at_which_nothing_happens_change_nothing(name: str, largest_den
     assert asked > 35
     starts = np.array([float(len(kind.starts)) for kind in plain.kinds.kinds])
 
-    def attempts(columns: Arrows) -> np.ndarray:
+    def attempts(columns: Arrows, phase: int) -> np.ndarray:
         return starts[columns.kind]
 
     known = before.count_rate(attempts)
@@ -208,7 +208,7 @@ def test_a_yearly_tested_unit_has_its_closed_form() -> None:
         assert found.value == pytest.approx(value, rel=2e-13), measure
         assert found.lower is not None
     repairs = np.array([float(bool(kind.repaired)) for kind in answers.space.kinds.kinds])
-    found = answers.count_rate(lambda columns: repairs[columns.kind])
+    found = answers.count_rate(lambda columns, _: repairs[columns.kind])
     assert found.value == pytest.approx(-math.expm1(-x) / 8760, rel=1e-14)
     assert ask(answers, "tests_per_year", of="unit").value == 1.0
     assert ask(answers, "tests_per_year", of="another").value == 0.0
@@ -291,7 +291,7 @@ def test_starts_at_instants_are_counted() -> None:
     answers = ScheduledAnswers(space, YEAR)
     running = 2 / (1 / 1e-3 + 1 / 0.1)
     starts = np.array([float(len(kind.starts)) for kind in kinds.kinds])
-    found = answers.count_rate(lambda columns: starts[columns.kind])
+    found = answers.count_rate(lambda columns, _: starts[columns.kind])
     assert found.value == pytest.approx(running + 2 / 100, rel=1e-13)
 
 

@@ -22,7 +22,8 @@ def answer(spec: dict[str, Any], measure: str, at: float | None = None) -> float
     for result in solution.results:
         if result.measure == measure and result.of is None and (at is None or result.at_hours == Fraction(at)):
             assert result.value is not None, result.reason
-            assert result.lower is not None and result.upper is not None
+            assert result.lower is not None
+            assert result.upper is not None
             assert result.lower <= result.value <= result.upper
             return result.value
     raise KeyError(measure)
