@@ -20,6 +20,7 @@ ABOUT_FAILURE = frozenset(MEASURES) - {
     "probability_of_waiting",
     "mean_units_failed",
     "mean_capacity",
+    "level_probability",
     "time_without_redundancy",
     "gain_over_single_unit",
     "gain_over_independent_blocks",
@@ -80,7 +81,7 @@ def _holds(direction: str, value: float, limit: Fraction) -> bool:
 def _margin(target: Target, value: float) -> str:
     """Return how far the value is from the limit, as a share of what counts."""
     limit = float(target.limit)
-    if target.measure in {*_CERTAIN, "mean_capacity"} and 0.5 < limit < 1:
+    if target.measure in {*_CERTAIN, "mean_capacity", "level_probability"} and 0.5 < limit < 1:
         ratio = (1 - value) / (1 - limit)
         return f"{_ratio(ratio)} the allowed shortfall from 1"
     if limit == 0:
@@ -92,7 +93,13 @@ def _ratio(ratio: float) -> str:
     """Return a ratio as the beginning of a phrase: ``62.8 % of``, ``12 times``."""
     if ratio < 1e-5:
         return f"{ratio:.1e} times"
-    return f"{100 * ratio:.3g} % of" if ratio < 9.995 else f"{ratio:.3g} times"
+    if ratio >= 9.995:
+        return f"{ratio:.3g} times"
+    for digits in (3, 4, 6, 9, 12):  # a near miss, or near hit, does not print as the limit itself
+        told = f"{100 * ratio:.{digits}g}"
+        if float(told) != 100.0 or ratio == 1.0:
+            break
+    return f"{told} % of"
 
 
 def _told(target: Target, result: Result, verdict: Verdict, satisfied: bool | None, why: str) -> TargetResult:

@@ -41,7 +41,12 @@ _ALWAYS = {
     "time_without_redundancy",
     "gain_over_single_unit",
     "gain_over_independent_blocks",
+    "hazardous_events_per_year",
+    "spurious_failures_per_year",
 }
+
+#: Measures that matter where something is tested; elsewhere they are the long-run values under another name.
+_WITH_TESTS = {"pfd_average", "pfd_peak"}
 
 _VERDICT_STYLE = {"met": "bold green", "cannot_occur": "bold green", "missed": "bold red", "undecided": "bold yellow"}
 
@@ -60,7 +65,10 @@ def print_solution(solution: Solution, console: Console) -> None:
     _heading(console, "Results")
     asked = {target.result for target in solution.targets}
     elsewhere = listed_measures(solution.redundancy)
-    shown = [each for each in solution.results if each in asked or (_matters(each) and not _is_in(each, elsewhere))]
+    tested = any(each.measure == "tests_per_year" for each in solution.results)
+    shown = [
+        each for each in solution.results if each in asked or (_matters(each, tested) and not _is_in(each, elsewhere))
+    ]
     console.print(_result_table(tuple(shown)))
     console.print(
         Padding(
@@ -104,7 +112,9 @@ def solution_text(solution: Solution, width: int = 110) -> str:
     return "\n".join(line.rstrip() for line in stream.getvalue().splitlines()) + "\n"
 
 
-def _matters(result: Result) -> bool:
+def _matters(result: Result, tested: bool) -> bool:
+    if result.measure in _WITH_TESTS and tested:
+        return True
     return result.measure in _ALWAYS or result.of is not None or result.state is not None
 
 
