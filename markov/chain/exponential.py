@@ -178,14 +178,14 @@ class Exponential:
         off = ((cut * most + lost * last) * length * length) * SLACK + 2.0**-1060
         return once, Columns(summed, (relative + 3 * MULTIPLY + 2 * W) * SLACK, off)
 
-    def spent(self, start: Doubled) -> tuple[Doubled, float, float]:
-        """Return the time spent in each state, Doubled[n], from start weights Doubled[n].
+    def spent(self, starts: Doubled) -> tuple[Doubled, float, float]:
+        """Return the time spent in each state, Doubled[r, n], from each of several start weights Doubled[r, n].
 
-        With its relative error, that of the start apart, and its absolute error summed over all states.
+        With its relative error, that of the start apart, and its absolute error summed over all states, of any of them.
         """
         n, mu, last = self.n, product_error(self.n), self.prepared.terms
-        row, relative, absolute = start.at((None, slice(None))), 0.0, 0.0
-        mass = float(start.high.sum()) * SLACK
+        row, relative, absolute = starts, 0.0, 0.0
+        mass = float(starts.high.sum(axis=1).max(initial=0.0)) * SLACK
         for number in range(self.doublings - 1, -1, -1):
             rung = self.prepared.rungs[number]
             row = add(row, product(row, self._rung(number)))
@@ -196,9 +196,12 @@ class Exponential:
         seen = [row]
         for _ in range(last):
             seen.append(product(seen[-1], jumps))
-        walk = Doubled(np.concatenate([each.high for each in seen]), np.concatenate([each.low for each in seen]))
+        walk = Doubled(
+            np.stack([each.high.reshape(-1) for each in seen]), np.stack([each.low.reshape(-1) for each in seen])
+        )
         summed = product(poisson.beyond.at((None, slice(None))), walk)
-        values = multiply(summed.at(0), self.step)
+        shape = starts.high.shape
+        values = multiply(Doubled(summed.high.reshape(shape), summed.low.reshape(shape)), self.step)
         relative = (relative + own + MULTIPLY + 2 * W) * SLACK
         lost = absolute + poisson.missing_beyond * mass + (2.0 * last + 10.0) * n * n * UNDERFLOW
         return values, relative, lost * float(self.step.high) * SLACK + 2.0**-1060

@@ -224,9 +224,11 @@ class PeriodicLimit:
         if not self.runner.dense:
             return None
         known: dict[int, Weights] = self.__dict__.setdefault("_times", {})
-        if number not in known:
-            stride = self.runner.stride(self.runner.course.cycle[number])
-            known[number] = stride.spent(self.weights[number])
+        if number not in known:  # all segments that go by the same matrix at once
+            strides = [self.runner.stride(segment) for segment in self.runner.course.cycle]
+            alike = [each for each, stride in enumerate(strides) if stride.moves_like(strides[number])]
+            found = strides[number].spent_from([self.weights[each] for each in alike])
+            known.update(zip(alike, found, strict=True))
         return known[number]
 
     def mean(self, values: Sequence[Floats], error: float = 0.0) -> Enclosure:

@@ -8,6 +8,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 
 import numpy as np
 
@@ -56,6 +57,7 @@ class ShortPoisson:
     error: float = 2 * W
 
 
+@lru_cache(maxsize=64)
 def short_poisson(x: Fraction, count: int) -> ShortPoisson:
     """Return the probabilities for ``0 <= x <= 1`` up to `count` jumps.
 

@@ -6,6 +6,7 @@ costs one transient solution for each start.  Both count the errors in the sense
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from functools import cached_property
@@ -234,12 +235,26 @@ class Stride:
 
     def spent(self, start: Weights) -> Weights:
         """Return the time spent in each state over the segment (dense only)."""
+        return self.spent_from([start])[0]
+
+    def moves_like(self, other: Stride) -> bool:
+        """Tell whether another segment moves by the same matrix (dense only)."""
+        return self._matrix is other._matrix
+
+    def spent_from(self, starts: Sequence[Weights]) -> list[Weights]:
+        """Return the time spent in each state over the segment from each of several starts (dense only)."""
         members = self._part.members
-        values, relative, off = self._matrix.spent(start.values.at(members))
-        spread = zeros(self.segment.n)
-        spread.high[members], spread.low[members] = values
-        absolute = (start.absolute * float(self.segment.hours) + off) * SLACK
-        return Weights(spread, joined(start.relative, relative), absolute, self._reached(start.possible), _DENSE)
+        inside = [start.values.at(members) for start in starts]
+        stacked = Doubled(np.stack([each.high for each in inside]), np.stack([each.low for each in inside]))
+        values, relative, off = self._matrix.spent(stacked)
+        found = []
+        for number, start in enumerate(starts):
+            spread = zeros(self.segment.n)
+            spread.high[members], spread.low[members] = values.at(number)
+            absolute = (start.absolute * float(self.segment.hours) + off) * SLACK
+            relative_here = joined(start.relative, relative)
+            found.append(Weights(spread, relative_here, absolute, self._reached(start.possible), _DENSE))
+        return found
 
     def ageing(self, start: Weights) -> Amounts:
         """Return the integral of the time since the segment began, over the time before absorption (dense only)."""

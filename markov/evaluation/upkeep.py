@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterable, Sequence
+from functools import reduce
+from operator import add
 
 import numpy as np
 from numpy.typing import NDArray
 
-from markov.chain import Enclosure, point
+from markov.chain import Enclosure
 from markov.errors import IllPosed
 from markov.evaluation.answers import Answers
 from markov.evaluation.questions import Question
@@ -174,20 +176,17 @@ def crew_measure(question: Question, chains: Sequence[Upkeep]) -> Enclosure:
         raise IllPosed(
             "the chain has no crew pool" if question.of is None else f"crew pool {question.of} serves nothing here"
         )
-    total = point(0, "")
     if question.measure == "waiting_for_crew":
-        for each in loading:
-            total = total + each.waiting(question.of)
-        return total
+        return _sum(each.waiting(question.of) for each in loading)
     if question.measure == "crew_utilisation":
         sizes = {pool.name: pool.size for each in loading for pool in each.pools(question.of)}
-        for each in loading:
-            total = total + each.busy(question.of)
-        return total.over(sum(sizes.values())).capped()
-    refused = point(0, "")
-    for each in loading:
-        calls, none_free = each.calls(question.of)
-        total, refused = total + calls, refused + none_free
+        return _sum(each.busy(question.of) for each in loading).over(sum(sizes.values())).capped()
+    calls = [each.calls(question.of) for each in loading]
+    total, refused = _sum(call for call, _ in calls), _sum(none_free for _, none_free in calls)
     if total.upper == 0:
         raise IllPosed("in the long run no fault calls for a crew")
     return (refused / total).capped()
+
+
+def _sum(values: Iterable[Enclosure]) -> Enclosure:
+    return reduce(add, values)

@@ -24,8 +24,9 @@ from markov.states.outage import drop_idle_outage
 Index = NDArray[np.int32]
 Keys = NDArray[np.int64] | NDArray[np.bytes_]
 
-#: Largest number of states of one island that is worked out.
+#: Largest number of states of one island that is worked out; of one in which several groups stand.
 ISLAND_LIMIT = 5_000_000
+JOINED_LIMIT = 1_000_000
 
 
 @dataclass(frozen=True)
@@ -209,8 +210,13 @@ def build_chart(
     while frontier.shape[1]:
         number = np.arange(done, done + frontier.shape[1], dtype=np.int64)
         done += frontier.shape[1]
-        if done > ISLAND_LIMIT:
+        if len(layout.nodes) == 1 and done > ISLAND_LIMIT:
             raise TooLarge(f"group {layout.name} alone has more than {ISLAND_LIMIT:,} states")
+        if len(layout.nodes) > 1 and done > JOINED_LIMIT:
+            raise TooLarge(
+                f"{len(layout.nodes)} groups that more than crews connects have more than {JOINED_LIMIT:,} states; "
+                "fewer groups under one cause, pool of spares, restoration or timetable would help"
+            )
         reached: list[Digits] = []
         for (rules, events), stores in zip(phases, raw, strict=True):
             for event, store in zip(events, stores, strict=True):
