@@ -21,6 +21,8 @@ _LEAST_ROWS = 3
 _SYMBOL_ROOM = 110.0
 _VALUE_ROOM = 140.0
 
+_MEANINGS = (("up", "up"), ("degraded", "degraded, delivers"), ("down", "down"), ("mixed", "everything else"))
+
 Mark = Shape | Words
 
 
@@ -52,7 +54,7 @@ def key_and_legend(diagram: StateDiagram, x: float, y: float, width: float) -> B
     """Return everything below the states: the key of the marks that occur, the symbols, the remarks."""
     marks: list[Mark] = [_rule(x, y, width)]
     y += 8.0
-    for band in (_key, _legend, _remarks):
+    for band in (_key, legend, _remarks):
         part = band(diagram, x, y, width)
         if part.marks:
             marks.extend(part.marks)
@@ -65,7 +67,8 @@ def _rule(x: float, y: float, width: float) -> Shape:
 
 
 def _key(diagram: StateDiagram, x: float, y: float, width: float) -> Band:
-    conditions = {node.condition for node in diagram.nodes}
+    own = [node for node in diagram.nodes if not node.elsewhere]
+    conditions = {node.condition for node in own}
     kinds = {arrow.kind for arrow in diagram.arrows}
     entries: list[tuple[str, float, Callable[[float, float], Sequence[Mark]]]] = []
 
@@ -74,17 +77,20 @@ def _key(diagram: StateDiagram, x: float, y: float, width: float) -> Band:
             condition, final, left + 1.0, top + 1.0, _SAMPLE_WIDTH - 2.0, _SAMPLE_HEIGHT - 2.0
         )
 
-    for condition, meaning in (("up", "up"), ("degraded", "degraded, delivers"), ("down", "down")):
+    for condition, meaning in _MEANINGS:
         if condition in conditions:
             entries.append((meaning, _SAMPLE_WIDTH, outline(condition, False)))
-    if any(node.final for node in diagram.nodes):
-        condition = next(node.condition for node in diagram.nodes if node.final)
+    if any(node.final for node in own):
+        condition = next(node.condition for node in own if node.final)
         entries.append(("final, never left", _SAMPLE_WIDTH, outline(condition, True)))
+    if len(own) < len(diagram.nodes):
+        entries.append(("on another page", _SAMPLE_WIDTH, outline("mixed", False)))
     pill = pill_width()
-    entries.append(("starts here", pill, lambda left, top: initial_pill(left, top + 9.3, pill)))
-    for kind in ("fault", "restoration"):
+    if any(node.initial for node in own):
+        entries.append(("starts here", pill, lambda left, top: initial_pill(left, top + 9.3, pill)))
+    for kind, meaning in (("fault", "fault"), ("restoration", "restoration"), ("instant", "at a fixed instant")):
         if kind in kinds:
-            entries.append((kind, _SAMPLE_WIDTH, _arrow_sample(kind)))
+            entries.append((meaning, _SAMPLE_WIDTH, _arrow_sample(kind)))
 
     marks: list[Mark] = []
     left = x
@@ -104,19 +110,19 @@ def _arrow_sample(kind: str) -> Callable[[float, float], Sequence[Mark]]:
 
     def draw(left: float, top: float) -> Sequence[Mark]:
         y = top + _SAMPLE_HEIGHT / 2
-        if kind == "fault":
+        if kind != "restoration":
             line, tip = straight((left, y), (left + _SAMPLE_WIDTH - 5.0, y)), (left + _SAMPLE_WIDTH, y)
         else:
             line, tip = straight((left + _SAMPLE_WIDTH, y), (left + 5.0, y)), (left, y)
         return (
             Shape(line, line=look.colour, width=look.width, dashes=look.dashes),
-            arrow_head(tip, kind != "fault", look),
+            arrow_head(tip, kind == "restoration", look),
         )
 
     return draw
 
 
-def _legend(diagram: StateDiagram, x: float, y: float, width: float) -> Band:
+def legend(diagram: StateDiagram, x: float, y: float, width: float) -> Band:
     """Return the symbols as a table: symbol, meaning, value; in several columns where they fit side by side."""
     if not diagram.legend:
         return Band((), y)

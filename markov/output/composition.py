@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 from markov.output.captions import Band, heading, key_and_legend
@@ -75,8 +75,10 @@ def compose(diagram: StateDiagram, skeleton: Skeleton, heights: Sequence[float])
     marks.extend(top_band.marks)
     marks.extend(_column_heads(diagram, skeleton, columns, top))
     marks.extend(_arrows(skeleton, columns, heights, ends))
-    for number in range(len(skeleton.boxes)):
-        marks.extend(_box_marks(diagram, skeleton, number, columns, heights[number]))
+    for number, box in enumerate(skeleton.boxes):
+        target = "" if box.node is None else f"state-{diagram.nodes[box.node].number}"
+        held = _box_marks(diagram, skeleton, number, columns, heights[number])
+        marks.extend(replace(mark, target=target) for mark in held)
     marks.extend(low_band.marks)
     return Picture(
         width=width + 2 * MARGIN,
@@ -173,7 +175,10 @@ def _box_marks(
     if box.text is not None and box.node is not None:
         node = diagram.nodes[box.node]
         left, top = middle - box.width / 2, y - box.height / 2
-        marks.extend(condition_outline(node.condition, node.final, left, top, box.width, box.height))
+        reference = node.elsewhere > 0
+        marks.extend(
+            condition_outline(node.condition, node.final, left, top, box.width, box.height, reference=reference)
+        )
         rows = 1 + len(box.text.lines)
         baseline = y - LINE_HEIGHT * rows / 2 + LINE_HEIGHT - 2.4
         marks.append(Words(left + box.text.padding, baseline, box.text.number, NUMBER_SIZE, bold=True))

@@ -2,19 +2,21 @@
 
 Words: a state is *up*, *degraded* (it still delivers) or *down*; it is *final* if nothing leads out of it; its *level*
 is the number of failed units, and every level is one column of the picture. A *fault* arrow leads to more failed
-units, a *restoration* arrow to fewer.
+units, a *restoration* arrow to fewer; an *instant* arrow is taken at a fixed time, with a chance in place of a rate.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal, get_args
 
 from markov.errors import UsageError
 
-Condition = Literal["up", "degraded", "down"]
-ArrowKind = Literal["fault", "restoration"]
+Condition = Literal["up", "degraded", "down", "mixed"]
+ArrowKind = Literal["fault", "restoration", "instant"]
 Columns = Literal["failed units", "steps"]
+Labels = Literal["formulas", "values", "both"]
 
 _CONDITIONS: tuple[str, ...] = get_args(Condition)
 _KINDS: tuple[str, ...] = get_args(ArrowKind)
@@ -31,7 +33,7 @@ class DiagramNode:
     lines
         Short text under the number, a line each. Any characters are allowed; every format escapes them.
     condition
-        "up", "degraded" or "down".
+        "up", "degraded" or "down"; "mixed" for a box that holds states of several conditions.
     initial, final
         Whether the system starts here; whether nothing leads out of it.
     level
@@ -40,6 +42,8 @@ class DiagramNode:
         The numbers of the states in a folded box; empty for a single state.
     top_level
         The greatest number of failed units in a column of several folded levels; None for one level.
+    elsewhere
+        The page on which the state stands in full, where this is only a reference to it; 0 for the state itself.
     """
 
     number: int
@@ -50,6 +54,7 @@ class DiagramNode:
     level: int = 0
     holds: tuple[int, ...] = ()
     top_level: int | None = None
+    elsewhere: int = 0
 
     def __post_init__(self) -> None:
         if self.condition not in _CONDITIONS:
@@ -71,15 +76,19 @@ class DiagramArrow:
     source, target
         Numbers of the states.
     label
-        The rate as a formula in Unicode, such as ``2·λ(drive)·c·(1−q)``.
+        The rate as a formula in Unicode, such as ``2·λ(drive)·c·(1−q)``; what happens, for an instant.
     kind
-        "fault" or "restoration".
+        "fault", "restoration" or "instant".
+    value
+        Least and greatest rate per hour (chance, for an instant) over the states in a folded box, the same for a single
+        state; None where it is not told.
     """
 
     source: int
     target: int
     label: str
     kind: ArrowKind
+    value: tuple[float, float] | None = None
 
     def __post_init__(self) -> None:
         if self.kind not in _KINDS:
@@ -123,6 +132,10 @@ class StateDiagram:
         Sentences to be printed in the picture, such as how states were folded.
     columns
         What the level of a state counts: failed units, or steps from the start where units are not known.
+    labels
+        What stands on the arrows: formulas, values per hour, or both.
+    is_page
+        Whether it is one page of several, which need not show where the system starts.
 
     Raises
     ------
@@ -139,6 +152,8 @@ class StateDiagram:
     alt_text: str = ""
     remarks: tuple[str, ...] = ()
     columns: Columns = "failed units"
+    labels: Labels = "formulas"
+    is_page: bool = False
 
     def __post_init__(self) -> None:
         if not self.nodes:
@@ -150,7 +165,7 @@ class StateDiagram:
                     f"state number {node.number} is used twice; expected a number of its own for each state"
                 )
             by_number[node.number] = node
-        if not any(node.initial for node in self.nodes):
+        if not self.is_page and not any(node.initial for node in self.nodes):
             raise UsageError("no state of the diagram is marked initial; expected at least one")
         for arrow in self.arrows:
             for number in (arrow.source, arrow.target):
@@ -168,19 +183,41 @@ class StateDiagram:
         """Return the alternative text: the one given, else a count of what is drawn."""
         if self.alt_text:
             return self.alt_text
-        counts = [
-            f"{count} {word}" for word in _CONDITIONS if (count := sum(node.condition == word for node in self.nodes))
-        ]
-        finals = sum(node.final for node in self.nodes)
+        own = [node for node in self.nodes if not node.elsewhere]
+        counts = [f"{count} {word}" for word in _CONDITIONS if (count := sum(node.condition == word for node in own))]
+        finals = sum(node.final for node in own)
         if finals:
             counts.append(f"{finals} of them final")
-        faults = sum(arrow.kind == "fault" for arrow in self.arrows)
-        restorations = len(self.arrows) - faults
-        word = "boxes" if any(node.holds for node in self.nodes) else "states"
+        faults, restorations, instants = (sum(arrow.kind == kind for arrow in self.arrows) for kind in _KINDS)
+        word = "boxes" if any(node.holds for node in own) else "states"
+        at_once = f", {instants} arrows taken at fixed instants" if instants else ""
+        named = {"formulas": "formula", "values": "value", "both": "formula and value"}[self.labels]
         return (
-            f"State diagram: {len(self.nodes)} {word} ({', '.join(counts)}), ordered from left to right by the number "
-            f"of {self.columns}; {faults} fault arrows and {restorations} restoration arrows, each with its formula."
+            f"State diagram: {len(own)} {word} ({', '.join(counts)}), ordered from left to right by the number "
+            f"of {self.columns}; {faults} fault arrows and {restorations} restoration arrows{at_once}, "
+            f"each with its {named}."
         )
+
+
+def value_text(value: tuple[float, float], kind: ArrowKind) -> str:
+    """Return a value with its unit of measure: ``0.25/h``, ``1e-05 to 2e-05/h``; a chance for an instant."""
+    least, most = (f"{each:.4g}" for each in value)
+    unit = "" if kind == "instant" else "/h"
+    return f"{least}{unit}" if least == most else f"{least} to {most}{unit}"
+
+
+def arrow_lines(arrows: Sequence[DiagramArrow], labels: Labels) -> tuple[str, ...]:
+    """Return what stands on a line that several parallel arrows of one kind share, a text for each line."""
+    kind = arrows[0].kind
+    formulas = [arrow.label for arrow in arrows if arrow.label.strip()]
+    joined = [
+        text if place == 0 else f"{'or' if kind == 'instant' else '+'} {text}" for place, text in enumerate(formulas)
+    ]
+    known = [arrow.value for arrow in arrows if arrow.value is not None]
+    if labels == "formulas" or len(known) < len(arrows) or kind == "instant":
+        return tuple(joined)
+    total = value_text((sum(least for least, _ in known), sum(most for _, most in known)), kind)
+    return (total,) if labels == "values" else (*joined, f"= {total}")
 
 
 def _listed(words: tuple[str, ...]) -> str:

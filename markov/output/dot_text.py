@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from markov.output.composition import column_title
-from markov.output.diagram import DiagramNode, StateDiagram
+from markov.output.diagram import DiagramNode, StateDiagram, arrow_lines
 from markov.output.folding import ranges
 from markov.output.lettering import legible
 
@@ -11,10 +11,12 @@ _SHAPES = {
     "up": 'shape=box, style="rounded,filled", fillcolor="#ffffff", penwidth=0.8',
     "degraded": 'shape=octagon, style=filled, fillcolor="#f3f1e9", penwidth=0.9',
     "down": 'shape=box, style=filled, fillcolor="#dcdee2", penwidth=2.2',
+    "mixed": "shape=box, style=dashed, penwidth=0.9",
 }
 _LINES = {
     "fault": "style=solid, arrowhead=normal",
     "restoration": 'style=dashed, arrowhead=empty, color="#2b5f86", fontcolor="#2b5f86"',
+    "instant": 'style=dotted, arrowhead=tee, color="#6b4a1f", fontcolor="#6b4a1f"',
 }
 
 
@@ -45,7 +47,7 @@ def dot_text(diagram: StateDiagram) -> str:
         members = "; ".join(f"s{node.number}" for node in diagram.nodes if node.level == level)
         lines.append(f"  {{ rank=same; level{level}; {members}; }}")
     for arrow in diagram.arrows:
-        label = _quoted((arrow.label,))
+        label = _quoted(arrow_lines([arrow], diagram.labels))
         lines.append(f"  s{arrow.source} -> s{arrow.target} [{_LINES[arrow.kind]}, label={label}];")
     lines.append("}")
     return "\n".join(lines) + "\n"
@@ -63,7 +65,7 @@ def _caption(diagram: StateDiagram) -> tuple[str, ...]:
     legend = (f"{entry.symbol}: {entry.meaning}, {entry.value}" for entry in diagram.legend)
     key = (
         "rounded corners: up; cut corners: degraded; heavy line: down; double line: final; "
-        "solid arrow: fault; broken arrow: restoration"
+        "solid arrow: fault; broken arrow: restoration; dotted arrow: at a fixed instant"
     )
     return (diagram.title, *diagram.subtitle, key, *legend, *diagram.remarks)
 

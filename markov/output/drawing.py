@@ -1,29 +1,25 @@
-"""A state diagram becomes a file: SVG, PDF, PNG or Graphviz source by the ending of its name."""
+"""A state diagram becomes files: SVG, PDF, PNG, Graphviz source or GraphML by the ending of the name."""
 
 from __future__ import annotations
 
 import os
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Literal
 
-from markov.errors import DrawingError, UsageError
-from markov.output.composition import compose
+from markov.errors import UsageError
 from markov.output.diagram import StateDiagram
 from markov.output.dot_text import dot_text
-from markov.output.engines import TIME_LIMIT, Engine, place_boxes
-from markov.output.folding import fold_by_level
+from markov.output.engines import TIME_LIMIT, Engine
+from markov.output.graphml import graphml_text
+from markov.output.paging import A4, Paper, lay_out
 from markov.output.picture import Picture
-from markov.output.skeleton import build_skeleton
 from markov.output.storing import store, taken
 
-ENDINGS = (".svg", ".pdf", ".png", ".dot")
-STATE_LIMIT = 200
-"""States that one picture may hold; a larger diagram is folded by level."""
-ARROW_LIMIT = 1000
-"""Arrows that one picture may hold; a diagram with more is folded by level."""
-_BOXES_WANTED = 40
-_COLUMNS_WANTED = 8
+ENDINGS = (".svg", ".pdf", ".png", ".dot", ".graphml")
+PICTURES = (".svg", ".pdf", ".png")
+"""Endings of a picture; the others are lists of states and arrows for other programs."""
 _MILLIMETRES_PER_POINT = 25.4 / 72
 _PAGES = (("A4", 210.0, 297.0), ("A3", 297.0, 420.0), ("A2", 420.0, 594.0), ("A1", 594.0, 841.0), ("A0", 841.0, 1189.0))
 _PAGE_MARGIN = 12.0
@@ -31,24 +27,27 @@ _PAGE_MARGIN = 12.0
 
 @dataclass(frozen=True)
 class Drawn:
-    """A file that has been written.
+    """Files that have been written.
 
     Parameters
     ----------
     path
-        Where it is.
+        Where it is; the first of several.
     engine
-        What placed the boxes: "dot", "graphviz-pure", "own", or "none" for Graphviz source.
+        What placed the boxes: "dot", "graphviz-pure", "own", or "none" where no boxes had to be placed.
     notes
         What the reader should know: engines that failed, folding, the page it fits, characters without a font.
+    paths
+        All files: several where SVG or PNG take several pages.
     """
 
     path: Path
     engine: Engine | Literal["none"]
     notes: tuple[str, ...]
+    paths: tuple[Path, ...] = ()
 
 
-def check_target(target: Path, *, overwrite: bool) -> str:
+def check_target(target: Path, *, overwrite: bool, endings: Sequence[str] = ENDINGS) -> str:
     """Return the ending of a file that a picture may be written to.
 
     Raises
@@ -57,8 +56,8 @@ def check_target(target: Path, *, overwrite: bool) -> str:
         An unknown ending, a folder that is not there, a file that exists already while `overwrite` is false.
     """
     form = target.suffix.lower()
-    if form not in ENDINGS:
-        raise UsageError(f"{target}: ending {target.suffix!r}; expected one of {', '.join(ENDINGS)}")
+    if form not in endings:
+        raise UsageError(f"{target}: ending {target.suffix!r}; expected one of {', '.join(endings)}")
     if not target.parent.is_dir():
         raise UsageError(f"{target}: there is no folder {target.parent}; make it first")
     if target.is_dir():
@@ -73,6 +72,8 @@ def write_diagram(
     path: str | os.PathLike[str],
     *,
     overwrite: bool = False,
+    paper: Paper | None = A4,
+    whole: bool = False,
     engine: Engine | None = None,
     time_limit: float = TIME_LIMIT,
 ) -> Drawn:
@@ -81,12 +82,17 @@ def write_diagram(
     Parameters
     ----------
     diagram
-        What to draw. More than 200 states or 1,000 arrows are folded by level first, which the picture says;
-        Graphviz source is written in full.
+        What to draw. What does not fit the paper with words of 8 pt is folded by level, or goes over several numbered
+        pages; Graphviz source and GraphML are written in full.
     path
-        The file, ending in .svg, .pdf, .png (300 dots per inch) or .dot.
+        The file, ending in .svg, .pdf, .png (300 dots per inch), .dot or .graphml. Several pages are pages of one PDF,
+        or files NAME-1.svg, NAME-2.svg and so on.
     overwrite
-        Whether a file of this name may be replaced. The file appears whole or not at all.
+        Whether files of these names may be replaced. Each appears whole or not at all.
+    paper
+        What every page has to fit; None for one sheet of whatever size.
+    whole
+        Whether every state is drawn by itself, over as many pages as that takes.
     engine
         "dot", "graphviz-pure" or "own"; None tries them in this order.
     time_limit
@@ -101,53 +107,40 @@ def write_diagram(
     """
     target = Path(path)
     form = check_target(target, overwrite=overwrite)
-    if form == ".dot":
-        store(dot_text(diagram).encode(), target, overwrite=overwrite)
-        return Drawn(target, "none", ())
-    drawable, folded = _drawable(diagram)
-    skeleton = build_skeleton(drawable)
-    placed = place_boxes(skeleton, engine=engine, time_limit=time_limit)
-    picture = compose(drawable, skeleton, placed.heights)
-    content, lacking = _content(picture, form)
-    store(content, target, overwrite=overwrite)
-    return Drawn(target, placed.engine, (*placed.notes, *folded, _page(picture), *lacking))
+    if form not in PICTURES:
+        text = dot_text(diagram) if form == ".dot" else graphml_text(diagram)
+        store(text.encode(), target, overwrite=overwrite)
+        return Drawn(target, "none", (), (target,))
+    sheets = lay_out(diagram, paper, whole=whole, engine=engine, time_limit=time_limit)
+    drawn = write_pictures(sheets.pictures, target, overwrite=overwrite)
+    return replace(drawn, engine=sheets.engine, notes=(*sheets.notes, *drawn.notes))
 
 
-def _drawable(diagram: StateDiagram) -> tuple[StateDiagram, tuple[str, ...]]:
-    """Return the diagram, folded where it is beyond the limits, and a note on that."""
-    states, arrows = len(diagram.nodes), len(diagram.arrows)
-    if states <= STATE_LIMIT and arrows <= ARROW_LIMIT:
-        return diagram, ()
-    if any(node.holds for node in diagram.nodes):
-        raise DrawingError(
-            f"a folded diagram of {states} boxes and {arrows} arrows; "
-            f"one picture holds {STATE_LIMIT} and {ARROW_LIMIT}: fold into wider bands of levels"
-        )
-    band = 1
-    folded = fold_by_level(diagram, band=band)
-    while _is_wide(folded) and band <= max(node.level for node in diagram.nodes):
-        band += 1
-        folded = fold_by_level(diagram, band=band)
-    note = (
-        f"{states} states and {arrows} arrows: more than {STATE_LIMIT} or {ARROW_LIMIT} cannot be read in one picture, "
-        f"folded into {len(folded.nodes)} boxes by level"
-    )
-    return folded, (note,)
-
-
-def _is_wide(folded: StateDiagram) -> bool:
-    columns = len({node.level for node in folded.nodes})
-    return len(folded.nodes) > _BOXES_WANTED or columns > _COLUMNS_WANTED
-
-
-def _content(picture: Picture, form: str) -> tuple[bytes, tuple[str, ...]]:
+def write_pictures(pictures: Sequence[Picture], target: Path, *, overwrite: bool = False) -> Drawn:
+    """Write finished pictures into one PDF, or into a file each; parameters and errors as `write_diagram`."""
+    form = check_target(target, overwrite=overwrite, endings=PICTURES)
+    notes: dict[str, None] = {}
+    contents: list[bytes] = []
     if form == ".svg":
         from markov.output.svg_writer import svg_text
 
-        return svg_text(picture).encode(), ()
-    from markov.output.page_writer import page_bytes
+        contents = [svg_text(picture).encode() for picture in pictures]
+    else:
+        from markov.output.page_writer import page_bytes, pdf_bytes
 
-    return page_bytes(picture, "pdf" if form == ".pdf" else "png")
+        made = [pdf_bytes(pictures)] if form == ".pdf" else [page_bytes(picture, "png") for picture in pictures]
+        for content, said in made:
+            contents.append(content)
+            notes.update(dict.fromkeys(said))
+    paths = [target]
+    if len(contents) > 1:
+        paths = [target.with_name(f"{target.stem}-{number}{target.suffix}") for number in range(1, len(contents) + 1)]
+        for each in paths:
+            check_target(each, overwrite=overwrite)
+    for content, each in zip(contents, paths, strict=True):
+        store(content, each, overwrite=overwrite)
+    sizes = dict.fromkeys(map(_page, pictures))
+    return Drawn(paths[0], "none", (*sizes, *notes), tuple(paths))
 
 
 def _page(picture: Picture) -> str:

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import io
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from typing import Any, Literal
 
 from markov.errors import DrawingError
@@ -25,47 +27,72 @@ def page_bytes(picture: Picture, form: Literal["pdf", "png"]) -> tuple[bytes, tu
     DrawingError
         A PNG that would have more than 65 535 dots along one side.
     """
-    import matplotlib
-    from matplotlib.figure import Figure
-
+    if form == "pdf":
+        return pdf_bytes((picture,))
     dots = max(picture.width, picture.height) * RESOLUTION / 72
-    if form == "png" and dots > _LONGEST_SIDE:
+    if dots > _LONGEST_SIDE:
         raise DrawingError(
             f"a PNG of {dots:.0f} dots along one side at {RESOLUTION} dpi, more than {_LONGEST_SIDE}: "
             "write .svg or .pdf, or fold the diagram"
         )
-    fonts = _Fonts(picture)
-    if form == "pdf":
-        said = {"Title": picture.title, "Subject": picture.description, "CreationDate": None, "Creator": "markov"}
-    else:
-        said = {"Title": picture.title, "Description": picture.description, "Software": None}
+    fonts = _Fonts((picture,))
+    said = {"Title": picture.title, "Description": picture.description, "Software": None}
     content = io.BytesIO()
-    # The user's own matplotlib settings must not change a document, so the defaults hold while this one is drawn.
+    with _own_settings():
+        _figure(picture, fonts).savefig(content, format="png", dpi=RESOLUTION, metadata=said)
+    return content.getvalue(), fonts.notes
+
+
+def pdf_bytes(pictures: Sequence[Picture]) -> tuple[bytes, tuple[str, ...]]:
+    """Return a PDF with a page for each picture, each of its picture's size; notes as for `page_bytes`."""
+    from matplotlib.backends.backend_pdf import PdfPages
+
+    fonts = _Fonts(pictures)
+    first = pictures[0]
+    described = " ".join(picture.description for picture in pictures)
+    said = {"Title": first.title, "Subject": described, "CreationDate": None, "Creator": "markov"}
+    content = io.BytesIO()
+    with _own_settings(), PdfPages(content, metadata=said) as pages:
+        for picture in pictures:
+            pages.savefig(_figure(picture, fonts), dpi=RESOLUTION)
+    return content.getvalue(), fonts.notes
+
+
+@contextmanager
+def _own_settings() -> Iterator[None]:
+    """Keep the user's own matplotlib settings from changing a document: the defaults hold while it is drawn."""
+    import matplotlib
+
     with matplotlib.rc_context():
         matplotlib.rcdefaults()
         matplotlib.rcParams.update({"pdf.fonttype": 42, "path.simplify": False, "path.snap": False})
-        figure = Figure(figsize=(picture.width / 72, picture.height / 72), facecolor="white")
-        axes = figure.add_axes((0.0, 0.0, 1.0, 1.0))
-        axes.set_xlim(0.0, picture.width)
-        axes.set_ylim(picture.height, 0.0)
-        axes.set_axis_off()
-        for place, mark in enumerate(picture.marks):
-            if isinstance(mark, Shape):
-                axes.add_patch(_patch(mark, place))
-            else:
-                axes.text(
-                    mark.x,
-                    mark.y,
-                    fonts.drawable(mark.text),
-                    fontproperties=fonts.properties(mark),
-                    color=mark.colour,
-                    ha={"start": "left", "middle": "center", "end": "right"}[mark.anchor],
-                    va="baseline",
-                    zorder=place,
-                    parse_math=False,
-                )
-        figure.savefig(content, format=form, dpi=RESOLUTION, metadata=said)
-    return content.getvalue(), fonts.notes
+        yield
+
+
+def _figure(picture: Picture, fonts: _Fonts) -> Any:
+    from matplotlib.figure import Figure
+
+    figure = Figure(figsize=(picture.width / 72, picture.height / 72), facecolor="white")
+    axes = figure.add_axes((0.0, 0.0, 1.0, 1.0))
+    axes.set_xlim(0.0, picture.width)
+    axes.set_ylim(picture.height, 0.0)
+    axes.set_axis_off()
+    for place, mark in enumerate(picture.marks):
+        if isinstance(mark, Shape):
+            axes.add_patch(_patch(mark, place))
+        else:
+            axes.text(
+                mark.x,
+                mark.y,
+                fonts.drawable(mark.text),
+                fontproperties=fonts.properties(mark),
+                color=mark.colour,
+                ha={"start": "left", "middle": "center", "end": "right"}[mark.anchor],
+                va="baseline",
+                zorder=place,
+                parse_math=False,
+            )
+    return figure
 
 
 def _patch(shape: Shape, place: int) -> Any:
@@ -96,8 +123,9 @@ def _patch(shape: Shape, place: int) -> Any:
 class _Fonts:
     """DejaVu Sans, with other fonts of the machine only for characters that it lacks."""
 
-    def __init__(self, picture: Picture) -> None:
-        wanted = {character for mark in picture.marks if isinstance(mark, Words) for character in mark.text}
+    def __init__(self, pictures: Sequence[Picture]) -> None:
+        words = (mark.text for picture in pictures for mark in picture.marks if isinstance(mark, Words))
+        wanted = {character for text in words for character in text}
         lacking = sorted(character for character in wanted if ord(character) not in covered() & covered(bold=True))
         self._families: list[str] = []
         self._undrawable: set[str] = set(lacking)

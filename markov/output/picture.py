@@ -11,6 +11,7 @@ from typing import Literal
 INK = "#1d2530"
 FAINT = "#59636f"
 RETURNING = "#2b5f86"
+AT_ONCE = "#6b4a1f"
 PAPER = "#ffffff"
 HAIRLINE = "#b9c0c8"
 
@@ -27,18 +28,19 @@ class Step:
 
 @dataclass(frozen=True)
 class Shape:
-    """An outline with fill, line or both."""
+    """An outline with fill, line or both; `target` names what it is part of, such as ``state-3``."""
 
     steps: tuple[Step, ...]
     fill: str | None = None
     line: str | None = None
     width: float = 1.0
     dashes: tuple[float, ...] = ()
+    target: str = ""
 
 
 @dataclass(frozen=True)
 class Words:
-    """One line of text at its baseline."""
+    """One line of text at its baseline; `target` as for a shape."""
 
     x: float
     y: float
@@ -47,6 +49,7 @@ class Words:
     colour: str = INK
     bold: bool = False
     anchor: Anchor = "start"
+    target: str = ""
 
 
 @dataclass(frozen=True)

@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 from typing import Literal
 
-from markov.output.diagram import ArrowKind, DiagramNode, StateDiagram
+from markov.output.diagram import ArrowKind, DiagramArrow, DiagramNode, StateDiagram, arrow_lines
 from markov.output.lettering import legible, text_width, wrapped
 
 TEXT_SIZE = 8.0
@@ -26,6 +26,8 @@ FINAL_PADDING = 9.0
 PILL_PADDING = 3.5
 _TEXT_ROOM = 116.0
 _FORMULA_ROOM = 104.0
+_FOLDED_ROOM = 80.0
+"""Room for a formula between folded boxes, whose columns would else not fit a page."""
 _PORT_PITCH = 8.0
 """Least distance between two arrow ends on one side of a state."""
 PORT_MARGIN = 9.0
@@ -106,7 +108,7 @@ class _Bundle:
     source: int
     target: int
     kind: ArrowKind
-    labels: tuple[str, ...]
+    lines: tuple[str, ...]
 
 
 def build_skeleton(diagram: StateDiagram) -> Skeleton:
@@ -129,10 +131,12 @@ def build_skeleton(diagram: StateDiagram) -> Skeleton:
     for box in boxes:
         widest[box.column] = max(widest.get(box.column, 0.0), box.width)
     boxes = [Box(box.column, widest[box.column], box.height, node=box.node, text=box.text) for box in boxes]
+    is_folded = any(node.holds and node.condition != "mixed" for node in diagram.nodes)
+    room = _FOLDED_ROOM if is_folded else _FORMULA_ROOM
     routes: list[Route] = []
     links: list[Link] = []
     for number, (bundle, gap, crossed) in enumerate(zip(bundles, gaps, plans, strict=True)):
-        formula = _formula_lines(bundle.labels)
+        formula = _formula_lines(bundle.lines, room)
         between: list[int] = []
         for place in crossed:
             between.append(len(boxes))
@@ -145,10 +149,10 @@ def build_skeleton(diagram: StateDiagram) -> Skeleton:
 
 def _bundled(diagram: StateDiagram) -> list[_Bundle]:
     place = {node.number: index for index, node in enumerate(diagram.nodes)}
-    labels: dict[tuple[int, int, ArrowKind], list[str]] = {}
+    together: dict[tuple[int, int, ArrowKind], list[DiagramArrow]] = {}
     for arrow in diagram.arrows:
-        labels.setdefault((place[arrow.source], place[arrow.target], arrow.kind), []).append(arrow.label)
-    return [_Bundle(*ends, tuple(held)) for ends, held in labels.items()]
+        together.setdefault((place[arrow.source], place[arrow.target], arrow.kind), []).append(arrow)
+    return [_Bundle(*ends, arrow_lines(held, diagram.labels)) for ends, held in together.items()]
 
 
 def _gaps(bundles: list[_Bundle], column: list[int]) -> list[int]:
@@ -164,7 +168,7 @@ def _gaps(bundles: list[_Bundle], column: list[int]) -> list[int]:
         source, target = column[bundle.source], column[bundle.target]
         if source == target:
             # Restorations point back to the left, so they turn on the left where there is a column to that side.
-            choices = [source - 1 if bundle.kind == "restoration" and source > 1 else source + 1]
+            choices = [source - 1 if bundle.kind != "fault" and source > 1 else source + 1]
             if source == last > 1:
                 choices = [source - 1]
         else:
@@ -200,10 +204,12 @@ def _links(route: Route, number: int) -> list[Link]:
 
 
 def _state_box(node: DiagramNode, column: int, ends: int, place: int) -> Box:
-    lines = tuple(part for line in node.lines for part in wrapped(legible(line), TEXT_SIZE, _TEXT_ROOM))
+    room = _FOLDED_ROOM if node.holds else _TEXT_ROOM
+    lines = tuple(part for line in node.lines for part in wrapped(legible(line), TEXT_SIZE, room))
+    condition = f"page {node.elsewhere}" if node.elsewhere else node.condition
     text = StateText(
         number=f"{len(node.holds)} states" if node.holds else str(node.number),
-        condition=f"{node.condition}, final" if node.final else node.condition,
+        condition=f"{condition}, final" if node.final else condition,
         padding=FINAL_PADDING if node.final else PADDING,
         initial=node.initial,
         lines=lines,
@@ -221,12 +227,10 @@ def pill_width() -> float:
     return text_width("initial", TEXT_SIZE) + 2 * PILL_PADDING
 
 
-def _formula_lines(labels: tuple[str, ...]) -> tuple[str, ...]:
+def _formula_lines(texts: tuple[str, ...], room: float) -> tuple[str, ...]:
     lines: list[str] = []
-    for label in labels:
-        text = legible(label) if not lines else f"+ {legible(label)}"
-        if text.strip():
-            lines.extend(wrapped(text, TEXT_SIZE, _FORMULA_ROOM, break_before="+=", break_late="·/"))
+    for text in texts:
+        lines.extend(wrapped(legible(text), TEXT_SIZE, room, break_before="+=", break_late="·/"))
     return tuple(lines)
 
 

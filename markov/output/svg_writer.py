@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+from itertools import groupby
 from xml.sax.saxutils import escape
 
 from markov.output.picture import Picture, Shape, Words
@@ -14,8 +15,12 @@ def svg_text(picture: Picture) -> str:
     """Return `picture` as an SVG document, its title and description marked up for readers who do not see it.
 
     The words stay text. Their widths were reckoned for DejaVu Sans, which runs wider than the faces that may stand in.
+    Marks that follow each other and have the same target stand in one element that bears it as ``data-target``.
     """
-    body = "\n".join(_shape(mark) if isinstance(mark, Shape) else _words(mark) for mark in picture.marks)
+    parts = (
+        (target, "\n".join(map(_mark, marks))) for target, marks in groupby(picture.marks, lambda mark: mark.target)
+    )
+    body = "\n".join(f'<g data-target="{escape(target)}">\n{held}\n</g>' if target else held for target, held in parts)
     # Names for the two texts, the same on every run, unlike those of another diagram on the same page.
     mark = "d" + hashlib.sha256(f"{picture.title}\0{picture.description}\0{body}".encode()).hexdigest()[:10]
     width, height = _number(picture.width), _number(picture.height)
@@ -27,6 +32,10 @@ def svg_text(picture: Picture) -> str:
         f'<desc id="{mark}-desc">{escape(picture.description)}</desc>\n'
         f"{body}\n</svg>\n"
     )
+
+
+def _mark(mark: Shape | Words) -> str:
+    return _shape(mark) if isinstance(mark, Shape) else _words(mark)
 
 
 def _shape(shape: Shape) -> str:

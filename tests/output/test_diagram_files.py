@@ -12,10 +12,11 @@ from pathlib import Path
 import pytest
 
 from markov.errors import DrawingError, UsageError
-from markov.output import drawing, page_writer
+from markov.output import page_writer, svg_writer
 from markov.output.diagram import DiagramArrow, DiagramNode, LegendEntry, StateDiagram
-from markov.output.drawing import ENDINGS, STATE_LIMIT, write_diagram
+from markov.output.drawing import ENDINGS, write_diagram
 from markov.output.page_writer import page_bytes
+from markov.output.paging import STATE_LIMIT
 from markov.output.picture import PAPER, Picture, Shape, Words, rectangle
 from tests.output.test_diagram import interlocking, lock_gate, plant
 
@@ -76,13 +77,13 @@ def test_an_existing_file_is_kept_unless_asked(tmp_path: Path, ending: str) -> N
 
 def test_a_file_that_appears_while_drawing_is_kept(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     path = tmp_path / "lock.svg"
-    content = drawing._content
+    content = svg_writer.svg_text
 
-    def slow(picture: Picture, form: str) -> tuple[bytes, tuple[str, ...]]:
+    def slow(picture: Picture) -> str:
         path.write_text("someone else's")
-        return content(picture, form)
+        return content(picture)
 
-    monkeypatch.setattr(drawing, "_content", slow)
+    monkeypatch.setattr(svg_writer, "svg_text", slow)
     with pytest.raises(UsageError, match="exists already"):
         write_diagram(lock_gate(), path, engine="own")
     assert path.read_text() == "someone else's"
@@ -180,7 +181,7 @@ def test_final_states_say_so_in_words(tmp_path: Path) -> None:
 def test_no_words_leave_the_sheet(tmp_path: Path, diagram: StateDiagram) -> None:
     from markov.output.lettering import text_width
 
-    write_diagram(diagram, tmp_path / "all.svg", engine="own")
+    write_diagram(diagram, tmp_path / "all.svg", engine="own", paper=None)
     root = ET.parse(tmp_path / "all.svg").getroot()
     _, _, width, height = (float(number) for number in root.get("viewBox", "").split())
     for element in root.iter(f"{SVG}text"):
@@ -194,15 +195,19 @@ def test_no_words_leave_the_sheet(tmp_path: Path, diagram: StateDiagram) -> None
 
 
 def test_all_words_have_at_least_eight_points(tmp_path: Path) -> None:
-    write_diagram(plant(3, 2), tmp_path / "all.svg", engine="own")
-    sizes = {float(e.get("font-size", "0")) for e in ET.parse(tmp_path / "all.svg").getroot().iter(f"{SVG}text")}
-    assert min(sizes) == 8.0
+    one = write_diagram(plant(3, 2), tmp_path / "one.svg", engine="own", paper=None)
+    several = write_diagram(plant(3, 2), tmp_path / "several.svg", engine="own")
+    assert len(several.paths) > len(one.paths) == 1
+    for path in (*one.paths, *several.paths):
+        assert min(float(e.get("font-size", "0")) for e in ET.parse(path).getroot().iter(f"{SVG}text")) == 8.0
 
 
 def test_the_page_that_the_picture_fits_is_named(tmp_path: Path) -> None:
     assert write_diagram(lock_gate(), tmp_path / "a.svg", engine="own").notes[-1].endswith("fits A4 upright")
-    assert "A4" not in write_diagram(plant(4, 2, 1), tmp_path / "b.svg", engine="own").notes[-1]
-    assert write_diagram(plant(40), tmp_path / "c.svg", engine="own").notes[-1].endswith("larger than A0")
+    large = write_diagram(plant(4, 2, 1), tmp_path / "b.svg", engine="own", paper=None)
+    assert "A4" not in large.notes[-1]
+    long = write_diagram(plant(40), tmp_path / "c.svg", engine="own", paper=None)
+    assert long.notes[-1].endswith("larger than A0")
 
 
 @pytest.mark.parametrize("name", HOSTILE)
@@ -275,7 +280,7 @@ def test_dot_source_is_never_folded(tmp_path: Path) -> None:
 
 def test_beyond_the_limit_the_picture_is_folded_and_says_so(tmp_path: Path) -> None:
     diagram = plant(7, 6, 4)
-    drawn = write_diagram(diagram, tmp_path / "large.svg", engine="own")
+    drawn = write_diagram(diagram, tmp_path / "large.svg", engine="own", paper=None)
     shown = " ".join(texts(tmp_path / "large.svg"))
     assert f"Folded: {len(diagram.nodes)} states" in shown
     assert any("folded into" in note for note in drawn.notes)
@@ -288,7 +293,7 @@ def test_beyond_the_limit_the_picture_is_folded_and_says_so(tmp_path: Path) -> N
 def test_at_the_limit_nothing_is_folded(tmp_path: Path) -> None:
     count = STATE_LIMIT
     nodes = tuple(DiagramNode(n, (), "up", initial=n == 0, level=n % 20) for n in range(count))
-    drawn = write_diagram(StateDiagram("limit", nodes, ()), tmp_path / "limit.svg", engine="own")
+    drawn = write_diagram(StateDiagram("limit", nodes, ()), tmp_path / "limit.svg", engine="own", paper=None)
     assert not any("folded" in note for note in drawn.notes)
 
 

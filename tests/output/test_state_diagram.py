@@ -7,15 +7,19 @@ import pytest
 from markov.errors import TooLarge
 from markov.evaluation import build_space
 from markov.output import state_diagram as module
-from markov.output.diagram import StateDiagram
+from markov.output.diagram import Labels, StateDiagram, arrow_lines
 from markov.output.drawing import write_diagram
 from markov.output.state_diagram import state_diagram
 from markov.spec import read, read_text
 
 
-def diagram(text: str, *, values: bool = False) -> StateDiagram:
+def diagram(text: str, *, labels: Labels = "formulas") -> StateDiagram:
     model = read_text(text, "spec")
-    return state_diagram(model, build_space(model), values=values)
+    return state_diagram(model, build_space(model), labels=labels)
+
+
+def label_lines(found: StateDiagram) -> list[tuple[str, ...]]:
+    return [arrow_lines([arrow], found.labels) for arrow in sorted(found.arrows, key=lambda arrow: arrow.label)]
 
 
 def of_example(checkout: Path, name: str) -> StateDiagram:
@@ -74,8 +78,10 @@ def test_states_that_are_never_entered_stand_last() -> None:
 
 
 def test_values_stand_beside_the_formulas_when_asked_for() -> None:
-    found = diagram("units: {a: {failure_rate: 3 /h, repair_time: 4 h}}\nsystem: a\n", values=True)
-    assert sorted(arrow.label for arrow in found.arrows) == ["λ(a) = 3/h", "μ(a) = 0.25/h"]
+    text = "units: {a: {failure_rate: 3 /h, repair_time: 4 h}}\nsystem: a\n"
+    assert label_lines(diagram(text)) == [("λ(a)",), ("μ(a)",)]
+    assert label_lines(diagram(text, labels="both")) == [("λ(a)", "= 3/h"), ("μ(a)", "= 0.25/h")]
+    assert label_lines(diagram(text, labels="values")) == [("3/h",), ("0.25/h",)]
 
 
 def test_alike_items_are_summed_in_one_formula() -> None:
@@ -98,3 +104,50 @@ def test_far_too_many_states_are_refused(monkeypatch: pytest.MonkeyPatch) -> Non
     monkeypatch.setattr(module, "DRAWING_LIMIT", 1)
     with pytest.raises(TooLarge, match="2 states are too many to draw"):
         diagram("units: {a: {failure_rate: 3 /h, repair_time: 4 h}}\nsystem: a\n")
+
+
+def test_what_tests_do_is_drawn_as_instants_of_their_own_kind(checkout: Path) -> None:
+    fans = of_example(checkout, "road_tunnel_fans")
+    instants = [arrow for arrow in fans.arrows if arrow.kind == "instant"]
+    assert {arrow.label for arrow in instants} == {"at trial run", "at trial run, overhaul"}
+    hidden = next(node.number for node in fans.nodes if "overhaul" in " ".join(node.lines) and node.level == 1)
+    assert [arrow.label for arrow in instants if arrow.source == hidden] == ["at trial run", "at trial run, overhaul"]
+    assert any("trial run every 4 380 h" in remark for remark in fans.remarks)
+
+
+def test_a_chance_at_an_instant_is_told_and_never_taken_for_a_rate() -> None:
+    text = (
+        "units: {a: {failure_rate: 1e-4 /h, repair_time: 4 h, detected: 0 %}}\n"
+        "tests: {trial: {of: a, interval: 1 y, causes_failure: 25 %}}\nsystem: a\n"
+    )
+    instants = [arrow for arrow in diagram(text, labels="values").arrows if arrow.kind == "instant"]
+    assert "at trial, chance 0.25" in {arrow.label for arrow in instants}
+    assert all("/h" not in line for arrow in instants for line in arrow_lines([arrow], "both"))
+
+
+def test_rates_of_some_phases_only_name_them(checkout: Path) -> None:
+    cooling = of_example(checkout, "polar_telescope_cooling")
+    labels = {(arrow.source, arrow.target): arrow.label for arrow in cooling.arrows if arrow.kind == "restoration"}
+    assert labels[1, 0] == "1/repair in summer"
+    faults = [arrow.label for arrow in cooling.arrows if (arrow.source, arrow.target) == (0, 1)]
+    assert faults == [
+        "compressor_failures·coverage in winter",
+        "compressor_failures·coverage·summer_load in summer",
+    ]
+
+
+def test_a_state_that_is_up_in_one_phase_alone_says_so() -> None:
+    text = (
+        "units: {a: {failure_rate: 1e-4 /h}, b: {failure_rate: 1e-4 /h}}\n"
+        "system: {any_of: [a, b]}\n"
+        "phases: [{name: idle, duration: 10 h}, {name: busy, duration: 5 h, system: {all_of: [a, b]}, repeat: true}]\n"
+    )
+    lines = {node.lines[-1] for node in diagram(text).nodes if node.level == 1}
+    assert lines == {"in busy: down"}
+
+
+def test_merged_states_say_how_many_they_stand_for() -> None:
+    groups = ", ".join(f"g{at}: {{members: [a]}}" for at in range(3))
+    text = f"units: {{a: {{failure_rate: 1e-4 /h, repair_time: 4 h}}}}\ngroups: {{{groups}}}\n"
+    found = diagram(f"{text}system: {{at_least: 2, of: [g0, g1, g2]}}\n")
+    assert [node.lines[-1] for node in found.nodes if node.level in (1, 2)] == ["merged: 3 alike"] * 2
