@@ -29,7 +29,7 @@ if TYPE_CHECKING:
     from markov.measures import MEASURES, Measure
     from markov.model import Model
     from markov.results import Check, Result, TargetResult
-    from markov.verbs import Solution, check, draft, draw, read, solve
+    from markov.verbs import Solution, changes, check, draft, draw, explain, plot, read, report, solve
 
 __all__ = [
     "MEASURES",
@@ -48,10 +48,14 @@ __all__ = [
     "TooLarge",
     "UsageError",
     "__version__",
+    "changes",
     "check",
     "draft",
     "draw",
+    "explain",
+    "plot",
     "read",
+    "report",
     "solve",
 ]
 
@@ -63,7 +67,9 @@ _LATE = {
     "Result": "markov.results",
     "TargetResult": "markov.results",
     "Check": "markov.results",
-    **dict.fromkeys(("Solution", "check", "draft", "draw", "read", "solve"), "markov.verbs"),
+    **dict.fromkeys(
+        ("Solution", "changes", "check", "draft", "draw", "explain", "plot", "read", "report", "solve"), "markov.verbs"
+    ),
 }
 
 

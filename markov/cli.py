@@ -17,6 +17,9 @@ from markov.errors import MarkovError, NotReached, SpecError, TooLarge, UsageErr
 if TYPE_CHECKING:
     from rich.console import Console
 
+    from markov.output.diagram import Labels
+    from markov.output.drawing import Drawn
+
 MET, MISSED, AT_FAULT, UNDECIDED, INTERNAL = 0, 1, 2, 3, 4
 
 _EXAMPLES = """\b
@@ -26,6 +29,7 @@ Examples:
   markov solve plant.yaml          measures, verdicts, assumptions
   markov solve plant.yaml --at "10 y" --json
   markov draw plant.yaml plant.svg
+  markov report plant.yaml plant.html
 \b
 Exit status: 0 all targets met; 1 a target missed; 2 the spec or the call is
 at fault; 3 undecided, or out of reach; 4 an internal error."""
@@ -112,35 +116,191 @@ def check(spec: str, as_json: bool) -> int:
 Examples:
   markov draw plant.yaml plant.svg
   markov draw plant.yaml plant.pdf --overwrite
-  markov draw plant.yaml plant.png --values"""
+  markov draw plant.yaml plant.png --labels both
+  markov draw plant.yaml ways.svg --paths 95%"""
 )
 @_SPEC
 @click.argument("picture", metavar="FILE")
-@click.option("--values", is_flag=True, help="Label arrows with values per hour beside the formulas.")
+@click.option(
+    "--labels",
+    type=click.Choice(["formulas", "values", "both"]),
+    default="formulas",
+    help="What stands on the arrows: formulas (the default), values per hour, or both.",
+)
+@click.option(
+    "--paths",
+    metavar="SHARE",
+    help="Only the ways to failure that together make this share of all failures, such as 95%; the rest in one box.",
+)
+@click.option("--whole", is_flag=True, help="Every state by itself, over as many pages as that takes.")
+@click.option("--one-sheet", is_flag=True, help="One sheet of whatever size, in place of pages of A4.")
 @click.option("--overwrite", is_flag=True, help="Replace FILE if it exists.")
-def draw(spec: str, picture: str, values: bool, overwrite: bool) -> int:
-    """Draw the state diagram of SPEC into FILE: .svg, .pdf, .png or .dot by its ending."""
+def draw(
+    spec: str, picture: str, labels: Labels, paths: str | None, whole: bool, one_sheet: bool, overwrite: bool
+) -> int:
+    """Draw the state diagram of SPEC into FILE: .svg, .pdf, .png, .dot or .graphml by its ending."""
     from pathlib import Path
 
-    from markov.evaluation import build_space
-    from markov.output.drawing import check_target, write_diagram
-    from markov.output.state_diagram import state_diagram
+    from markov.output.draw_model import draw_model
+    from markov.output.drawing import check_target
     from markov.progress import progress_line
     from markov.verbs import read
 
     check_target(Path(picture), overwrite=overwrite)
     model = read(spec)
     with progress_line() as tell:
-        tell("generating the chain")
-        space = build_space(model)
-        tell(f"drawing {space.size:,} states")
-        drawn = write_diagram(state_diagram(model, space, values=values), Path(picture), overwrite=overwrite)
+        drawn = draw_model(
+            model,
+            picture,
+            labels=labels,
+            paths=paths,
+            whole=whole,
+            one_sheet=one_sheet,
+            overwrite=overwrite,
+            progress=tell,
+        )
+    _tell_drawn(drawn)
+    return MET
+
+
+@app.command(
+    epilog="""\b
+Examples:
+  markov plot plant.yaml plant.svg
+  markov plot plant.yaml cycle.pdf --what cycle"""
+)
+@_SPEC
+@click.argument("picture", metavar="FILE")
+@click.option(
+    "--what",
+    metavar="WORD",
+    default="unreliability",
+    help="reliability, unreliability (the default, with unavailability and the limits of targets), cycle (between "
+    "tests, visits and phase boundaries), dependences or ways (as bars), structure (what must deliver).",
+)
+@click.option("--overwrite", is_flag=True, help="Replace FILE if it exists.")
+def plot(spec: str, picture: str, what: str, overwrite: bool) -> int:
+    """Plot results of SPEC, or draw what must deliver, into FILE: .svg, .pdf or .png by its ending."""
+    from pathlib import Path
+
+    from markov.output.draw_plot import draw_plot
+    from markov.output.drawing import PICTURES, check_target
+    from markov.progress import progress_line
+    from markov.verbs import read
+
+    check_target(Path(picture), overwrite=overwrite, endings=PICTURES)
+    model = read(spec)
+    with progress_line() as tell:
+        drawn = draw_plot(model, picture, what=what, overwrite=overwrite, progress=tell)
+    _tell_drawn(drawn)
+    return MET
+
+
+def _tell_drawn(drawn: Drawn) -> None:
+    """Say on standard error which files were drawn, and what there is to know about them."""
     for note in drawn.notes:
         if not note.endswith(": not found"):  # an engine that is not there is no news where another did the work
             click.echo(f"markov: {note}", err=True)
     engine = "" if drawn.engine == "none" else f", laid out by {drawn.engine}"
-    click.echo(f"{drawn.path}: {space.size:,} states{engine}", err=True)
+    pages = f" and {len(drawn.paths) - 1} more" if len(drawn.paths) > 1 else ""
+    click.echo(f"{drawn.path}{pages}{engine}", err=True)
+
+
+@app.command(
+    epilog="""\b
+Examples:
+  markov report plant.yaml plant.html
+  markov report plant.yaml plant.docx --overwrite
+  markov report plant.yaml tables.zip"""
+)
+@_SPEC
+@click.argument("file", metavar="FILE")
+@click.option(
+    "--at", "times", multiple=True, metavar="TIME", help='Answer at this time too, such as "1 y"; repeatable.'
+)
+@click.option("--overwrite", is_flag=True, help="Replace FILE, and the files beside it, if they exist.")
+def report(spec: str, file: str, times: tuple[str, ...], overwrite: bool) -> int:
+    """Solve SPEC and write the report for a safety case into FILE.
+
+    The ending decides: .html, .docx, .pdf; .tex or .md with further files beside it; .csv, .zip or a folder for all
+    tables in full.
+    """
+    from pathlib import Path
+
+    from markov.documents.report import make_report
+    from markov.documents.spec_lines import read_with_lines
+    from markov.documents.writing import check_report_target, write_report
+    from markov.progress import progress_line
+    from markov.verbs import hours
+
+    target = Path(file)
+    check_report_target(target, overwrite=overwrite)
+    model, lines = read_with_lines(spec)
+    asked = [hours(time, model) for time in times]
+    with progress_line() as tell:
+        made = make_report(model, asked, lines=lines, progress=tell)
+        tell(f"writing {target.name}")
+        written = write_report(made, target, overwrite=overwrite)
+    beside = len(written.paths) - 1
+    more = f" and {beside} further file{'s' if beside > 1 else ''} beside it" if beside and not target.is_dir() else ""
+    click.echo(f"{target}{f': {len(written.paths)} files' if target.is_dir() else more}", err=True)
+    return written.solution.exit_status
+
+
+@app.command(
+    epilog="""\b
+Examples:
+  markov explain plant.yaml
+  markov explain plant.yaml 3
+  markov explain plant.yaml 0 3 --json"""
+)
+@_SPEC
+@click.argument("states", nargs=-1, metavar="[STATE [STATE]]")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
+def explain(spec: str, states: tuple[str, ...], as_json: bool) -> int:
+    """Explain SPEC in a paragraph; one STATE of its chain; or what leads from one STATE to another, and why so often.
+
+    States go by the names or the numbers that `markov draw` shows.
+    """
+    from markov.documents.explain import explain as explain_model
+    from markov.documents.explain_words import explanation_json, explanation_text
+    from markov.documents.spec_lines import read_with_lines
+    from markov.progress import progress_line
+
+    model, lines = read_with_lines(spec)
+    with progress_line() as tell:
+        found = explain_model(model, states, lines=lines, progress=tell)
+    _emit(explanation_json(found) if as_json else explanation_text(found))
     return MET
+
+
+@app.command(
+    epilog="""\b
+Examples:
+  markov changes old.yaml new.yaml
+  markov changes by_hand.yaml plant.yaml --json
+\b
+Exit status: 0 no verdict flipped; 1 one did, or a hand-written chain and a
+generated one differ; 3 a verdict became or ceased to be undecided, or a
+target was removed."""
+)
+@click.argument("old", metavar="OLD")
+@click.argument("new", metavar="NEW")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object and nothing else.")
+def changes(old: str, new: str, as_json: bool) -> int:
+    """Tell what changed from the spec OLD to NEW: states, arrows, parameters, assumptions, results, verdicts."""
+    from markov.documents.changes import compare
+    from markov.documents.changes_words import changes_json, changes_text
+    from markov.documents.spec_lines import read_with_lines
+    from markov.progress import progress_line
+
+    if old == new == "-":
+        raise UsageError("both specs from standard input; expected a file for one of them at least")
+    (before, lines_before), (after, lines_after) = read_with_lines(old), read_with_lines(new)
+    with progress_line() as tell:
+        found = compare(before, after, old_lines=lines_before, new_lines=lines_after, progress=tell)
+    _emit(changes_json(found) if as_json else changes_text(found))
+    return found.exit_status
 
 
 @app.command(

@@ -1,4 +1,4 @@
-"""The verbs of the public door, as the command line has them: read, solve, check, draw, draft."""
+"""The verbs of the public door, as the command line has them: read, solve, check, draw, report and so on."""
 
 from __future__ import annotations
 
@@ -13,6 +13,9 @@ from markov import results
 from markov.errors import UsageError
 
 if TYPE_CHECKING:
+    from markov.documents.explanation import Explanation
+    from markov.documents.revision import Changes
+    from markov.documents.writing import Reported
     from markov.model import Model
     from markov.output.drawing import Drawn
     from markov.results import Check
@@ -84,7 +87,17 @@ def check(spec: Model | str | Path) -> Check:
 
 
 def draw(spec: Model | str | Path, path: str | Path, *, overwrite: bool = False, **options: Any) -> Drawn:
-    """Draw the state diagram into a file; the format follows the ending (.svg, .pdf, .png, .dot).
+    """Draw the state diagram into a file; the format follows the ending (.svg, .pdf, .png, .dot, .graphml).
+
+    Parameters
+    ----------
+    spec : Model, str or Path
+    path : str or Path
+    overwrite : bool
+        Whether files of this name may be replaced.
+    **options
+        ``labels``: ``"formulas"``, ``"values"`` or ``"both"``; ``paths``: share of all failures, such as ``"95%"``,
+        that the ways to failure shown make together; ``whole``: every state by itself; ``one_sheet``: no pages.
 
     Raises
     ------
@@ -93,12 +106,106 @@ def draw(spec: Model | str | Path, path: str | Path, *, overwrite: bool = False,
     DrawingError
         The picture could not be made.
     """
-    from markov.evaluation import build_space
-    from markov.output.drawing import write_diagram
-    from markov.output.state_diagram import state_diagram
+    from markov.output.draw_model import draw_model
 
+    return draw_model(_model(spec), Path(path), overwrite=overwrite, **options)
+
+
+def plot(spec: Model | str | Path, path: str | Path, *, what: str = "unreliability", overwrite: bool = False) -> Drawn:
+    """Plot results, or draw what must deliver, into a file; the format follows the ending (.svg, .pdf, .png).
+
+    Parameters
+    ----------
+    spec : Model, str or Path
+    path : str or Path
+    what : str
+        ``reliability``, ``unreliability``, ``cycle``, ``dependences``, ``ways`` or ``structure``.
+    overwrite : bool
+        Whether a file of this name may be replaced.
+
+    Raises
+    ------
+    UsageError
+        An ending or a word that is none of these, or a file that exists while `overwrite` is false.
+    IllPosed
+        The model has nothing of the kind to plot.
+    """
+    from markov.output.draw_plot import draw_plot
+
+    return draw_plot(_model(spec), Path(path), what=what, overwrite=overwrite)
+
+
+def report(
+    spec: Model | str | Path, path: str | Path, *, at: Iterable[str | float | Fraction] = (), overwrite: bool = False
+) -> Reported:
+    """Solve a model and write the report for a safety case into a file.
+
+    Parameters
+    ----------
+    spec : Model, str or Path
+        A model, or the file of a spec.
+    path : str or Path
+        The file: .html, .docx, .pdf, .tex, .md, .csv or .zip by its ending; or a folder for CSV files.
+    at : iterable of str, float or Fraction
+        Times beside the mission time, as in `solve`.
+    overwrite : bool
+        Whether files of these names may be replaced.
+
+    Returns
+    -------
+    Reported
+        The files that were written, and the solution that they report.
+
+    Raises
+    ------
+    SpecError, UsageError
+        The spec or the call is at fault; a file exists while `overwrite` is false.
+    TooLarge
+        The chain would be too large.
+    """
+    from markov.documents.report import make_report
+    from markov.documents.writing import check_report_target, write_report
+
+    check_report_target(Path(path), overwrite=overwrite)
     model = _model(spec)
-    return write_diagram(state_diagram(model, build_space(model)), Path(path), overwrite=overwrite, **options)
+    return write_report(make_report(model, [hours(time, model) for time in at]), path, overwrite=overwrite)
+
+
+def explain(spec: Model | str | Path, *states: str) -> Explanation:
+    """Explain a model, one of its states, or what leads from one state to another.
+
+    Parameters
+    ----------
+    spec : Model, str or Path
+    *states : str
+        Nothing for the whole model; one state; two for the arrow between them.  Each by the name or the number that
+        `draw` shows.
+
+    Raises
+    ------
+    SpecError, UsageError
+        The spec is at fault; there is no such state or arrow.
+    TooLarge
+        The chain would be too large.
+    """
+    from markov.documents.explain import explain as explain_model
+
+    return explain_model(_model(spec), states)
+
+
+def changes(old: Model | str | Path, new: Model | str | Path) -> Changes:
+    """Compare two revisions of a plant, or a hand-written chain with a generated one.
+
+    Raises
+    ------
+    SpecError
+        A spec is at fault.
+    TooLarge
+        A chain would be too large.
+    """
+    from markov.documents.changes import compare
+
+    return compare(_model(old), _model(new))
 
 
 def draft(path: str | Path) -> Path:

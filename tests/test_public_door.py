@@ -36,7 +36,19 @@ def test_importing_the_package_loads_nothing_heavy(checkout: Path) -> None:
     assert not loaded & HEAVY
 
 
-@pytest.mark.parametrize("arguments", [["--help"], ["--version"], ["solve", "--help"], ["draw", "--help"]])
+@pytest.mark.parametrize(
+    "arguments",
+    [
+        ["--help"],
+        ["--version"],
+        ["solve", "--help"],
+        ["draw", "--help"],
+        ["plot", "--help"],
+        ["report", "--help"],
+        ["explain", "--help"],
+        ["changes", "--help"],
+    ],
+)
 def test_help_loads_nothing_heavy(checkout: Path, arguments: list[str]) -> None:
     loaded = loaded_by(as_typed(*arguments), checkout)
     assert "markov" in loaded
@@ -67,10 +79,14 @@ def test_the_public_names_are_these() -> None:
         "TooLarge",
         "UsageError",
         "__version__",
+        "changes",
         "check",
         "draft",
         "draw",
+        "explain",
+        "plot",
         "read",
+        "report",
         "solve",
     ]
     for name in markov.__all__:

@@ -292,7 +292,9 @@ def test_an_interrupt_while_solving_prints_nothing(program: Program, monkeypatch
     assert told.status not in range(5)
 
 
-@pytest.mark.parametrize("moment", ["markov.output.drawing.place_boxes", "markov.output.drawing._content", "os.fsync"])
+@pytest.mark.parametrize(
+    "moment", ["markov.output.paging.place_boxes", "markov.output.svg_writer.svg_text", "os.fsync"]
+)
 @pytest.mark.parametrize("before", [None, "mine"], ids=["new file", "existing file"])
 def test_an_interrupt_while_drawing_leaves_the_folder_as_it_was(
     program: Program, monkeypatch: pytest.MonkeyPatch, moment: str, before: str | None
