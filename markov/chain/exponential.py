@@ -24,6 +24,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import cached_property
 
 import numpy as np
 
@@ -140,6 +141,12 @@ class Exponential:
             twice = self._grown(number, twice, passed)
             once = self._grown(number, once, once)
         return once, twice
+
+    @cached_property
+    def ages(self) -> Columns:
+        """Integral of the time passed over the time before absorption, from each state, Doubled[n, 1]."""
+        ones = np.ones((self.n, 1))
+        return self.weighted_gains(Doubled(ones, np.zeros_like(ones)), 0.0)[1]
 
     def _grown(self, number: int, here: Columns, later: Columns) -> Columns:
         """Return ``here + E_k later``."""

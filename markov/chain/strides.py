@@ -259,8 +259,7 @@ class Stride:
     def ageing(self, start: Weights) -> Amounts:
         """Return the integral of the time since the segment began, over the time before absorption (dense only)."""
         part = self._part
-        ones = plain(np.ones((part.chain.n, 1)))
-        _, twice = self._matrix.weighted_gains(ones, 0.0)
+        twice = self._matrix.ages
         inside = replace(start, values=start.values.at(part.members))
         row = product(inside.values.at((None, slice(None))), twice.values).at(0)
         relative = joined(start.relative, twice.relative, product_error(part.chain.n))

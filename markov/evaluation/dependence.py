@@ -16,7 +16,7 @@ from markov.model import Crew, Group, InitialFaults, Model, ProofTest, SparesPoo
 from markov.quantities import Quantity, parse_quantity
 from markov.states import Plan
 
-_AT_ONCE = parse_quantity("0 h")
+_MOMENT = parse_quantity("1 s")
 
 
 @dataclass(frozen=True)
@@ -294,8 +294,8 @@ def _spares_at_hand(model: Model) -> Model:
 def _exchanged(unit: Unit, pool: SparesPool) -> tuple[Unit, bool]:
     """Return a unit whose repair is the exchange by a spare at hand, and whether that takes no time at all."""
     swap, delay = pool.swap_time, unit.logistic_delay
-    if swap is None or swap.is_zero:  # the delay alone, if there is one
-        swap, delay = (_AT_ONCE if delay is None else delay), None
+    if swap is None or swap.is_zero:  # the delay alone, if there is one; a moment, so that the fault still is a fault
+        swap, delay = (_MOMENT if delay is None or delay.is_zero else delay), None
     update: dict[str, Quantity | int | dict[str, Any] | None] = {
         "repair_time": swap,
         "repair_rate": None,

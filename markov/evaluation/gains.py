@@ -57,6 +57,8 @@ def independent_blocks(model: Model, at: Fraction | None) -> Enclosure:
     """Return what groups solved alone, each with crews of its own, give when combined by the structure."""
     if model.system is None:
         raise AssertionError("a generated chain has a system")
+    if any(phase.system is not None and phase.system != model.system for phase in model.phases):
+        raise IllPosed("phases have criteria of their own, and groups solved alone do not tell which of them they meet")
     parts: dict[str, Share] = {}
     for name in model.named_in_system:
         phases = tuple(phase.model_copy(update={"system": None}) for phase in model.phases)

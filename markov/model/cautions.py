@@ -209,7 +209,9 @@ def _crew_sizes(content: Content) -> Iterator[str]:
     for place in content.placements:
         items[place.unit] = items.get(place.unit, 0) + place.count
     for name, crew in content.crews.items():
+        spares = {content.pool_of_spares(unit) for unit in crew.repairs} - {None}
         served = sum(items.get(unit, 0) for unit in crew.repairs)
+        served += sum(content.spares[pool].stock for pool in spares if pool is not None)
         if crew.size > served:
             yield f"crews.{name}: a size of {crew.size} for {served} unit{'' if served == 1 else 's'}."
 

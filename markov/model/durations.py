@@ -47,6 +47,10 @@ class SpreadTime(Part):
     )
 
     def _faults(self, unread: Collection[str]) -> Iterable[Fault]:
+        if self.stages is not None and self.stages > MOST_STAGES:
+            found = f"{self.stages:,} stages"
+            fix = f"write {MOST_STAGES} or less: the spread is then {100 / MOST_STAGES**0.5:.2g} % of the mean already"
+            yield Fault(("stages",), found, f"at most {MOST_STAGES}", fix)
         if self.mean is None or self.standard_deviation is None:
             return
         shape = TimeShape(self.mean, self.standard_deviation, None, False)

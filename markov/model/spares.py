@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Iterable, Mapping
 from typing import ClassVar, Literal
 
 from pydantic import Field
 
 from markov.model.durations import MaybeShapedTime, ShapedTimeAboveZero, TimeShape, shape_of
+from markov.model.faults import Fault
 from markov.model.part import Part
 from markov.model.readers import Count, Names
+
+#: Most spares of a pool, and of one order: each is a state of its own.
+MOST_SPARES = 1000
 
 
 class SparesPool(Part):
@@ -47,6 +51,13 @@ class SparesPool(Part):
         "while the stock is empty.",
     )
     batch: Count = Field(1, description="Size of an order: one for so many draws or faults, which arrives whole.")
+
+    def _faults(self, unread: Collection[str]) -> Iterable[Fault]:
+        for key, number in (("stock", self.stock), ("batch", self.batch)):
+            if key not in unread and number > MOST_SPARES:
+                found = f"{number:,} spares"
+                fix = "write less: what never runs out needs no stock, but `repair_time`"
+                yield Fault((key,), found, f"at most {MOST_SPARES:,}", fix)
 
     @property
     def lead_time_shape(self) -> TimeShape | None:

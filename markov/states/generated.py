@@ -163,7 +163,7 @@ class GeneratedSpace:
         """Tell whether the items of a slot count for a subject: a group, a train, a kind, or the system (None)."""
         top = self.plan.islands[island].top_of(slot)
         if subject is None:
-            return self.plan.model.system is not None and top in names(self.plan.model.system)
+            return self.plan.model.system is not None and top in self.plan.model.named_in_any_phase
         return subject in (top, slot.group, slot.unit, slot.name)
 
     def slots_of(self, subject: str | None) -> frozenset[tuple[str, str]]:

@@ -152,7 +152,7 @@ def is_preemptive(model: Model, crew: str) -> bool:
 
 def island_names(model: Model) -> list[str]:
     """Name every island that the model could have, those of the system first, then in the order of the text."""
-    named = list(dict.fromkeys(names(model.system))) if model.system is not None else []
+    named = list(model.named_in_any_phase) if model.system is not None else []
     grouped = {member.name for group in model.groups.values() for member in group.members}
     pooled = {unit for crew in model.crews.values() for unit in crew.repairs}
     trains = {member.name for group in model.groups.values() for member in group.members if member.is_group}

@@ -99,7 +99,7 @@ class Drawing:
 
     def base_of(self, cause: CommonCause, name: str, struck: list[Slot]) -> Factor:
         """Return the failure rate that the shares of a cause are taken of."""
-        rates = [slot.failure for slot in struck if slot.failure is not None]
+        rates = [slot.failure for slot in struck if slot.failure is not None for _ in range(slot.count)]
         return self._base(cause, name, rates)
 
     def _base(self, cause: CommonCause, name: str, rates: list[Factor]) -> Factor:
@@ -118,10 +118,10 @@ class Drawing:
     def base_rate(self, cause: CommonCause, name: str) -> Fraction:
         """Return the failure rate per hour that the shares of a cause are taken of."""
         rates = []
-        for _, unit in self.struck_kinds(cause):
+        for (_, unit), count in self.struck_kinds(cause).items():
             factor = failure_of(unit, self.model.units[unit], f"units.{unit}")
             if factor is not None:
-                rates.append(factor)
+                rates += [factor] * count
         return self._base(cause, name, rates).exact if rates else Fraction(0)
 
     def _stock_rows(self, name: str) -> StockRows:

@@ -131,7 +131,7 @@ def test_spares_always_at_hand_are_the_limit_of_a_growing_stock() -> None:
     assert 1 <= many.factor.long_run.value < 1 + 1e-9
 
 
-def test_a_plant_that_never_fails_once_perfect_says_so() -> None:
+def test_an_exchange_without_a_time_takes_a_second_once_spares_are_at_hand() -> None:
     text = """
 units: {u: {failure_rate: 2e-3 /h}}
 spares: {s: {for: u, stock: 1, lead_time: 300 h}}
@@ -139,8 +139,9 @@ system: u
 """
     solution = markov.solve(read_text(text, "spec"))
     effect = only_effect(solution)
-    assert effect.factor.long_run.value is None
-    assert effect.factor.long_run.reason == "does not fail without it"
+    second = 2e-3 / 3600
+    down = solution.result("steady_state_unavailability").value
+    assert effect.factor.long_run.value == pytest.approx(down / (second / (1 + second)), rel=1e-12)
     assert redundancy(solution).long_run_cause == "waiting_for_spares"
 
 
@@ -345,3 +346,17 @@ def test_the_lock_is_held_back_by_starts_in_the_long_run_and_by_coverage_in_its_
     found = redundancy(markov.solve(checkout / "specs" / "harbour_lock.yaml"))
     assert found.long_run_cause == "start_failures"
     assert found.mission_cause == "imperfect_coverage"
+
+
+def test_spares_at_hand_do_not_hide_what_coverage_loses() -> None:
+    text = """
+units: {p: {failure_rate: 100 per million hours}}
+groups:
+  g:
+    members: [{unit: p, count: 2}]
+    redundancy: hot_standby
+    switchover: {coverage: 99 %, uncovered: {outcome: lost}}
+spares: {s: {for: p, stock: 1, lead_time: 30 d}}
+system: g
+"""
+    assert redundancy(markov.solve(read_text(text, "spec"))).long_run_cause == "imperfect_coverage"

@@ -111,3 +111,7 @@ def test_stages_beside_a_shaped_switchover_are_refused(told):
     group = "{members: [{unit: pump, count: 2}], redundancy: cold_standby, switchover: {time: {fixed: 1 h}, stages: 2}}"
     text = f"units: {{pump: {{failure_rate: 1 /y}}}}\ngroups: {{g: {group}}}\nsystem: g\n"
     assert "`stages` beside" in told(text).found
+
+
+def test_a_fixed_time_takes_no_more_stages_than_a_spread(told):
+    assert told(SPEC % "{fixed: 24 h, stages: 201}").expected == "at most 200"

@@ -67,3 +67,13 @@ def test_kind_has_one_pool(told):
 def test_unit_outside_of_the_system_may_draw_spares(read):
     text = SPEC.replace("all_of: [water, lamp]", "all_of: [lamp]") % "for: motor, stock: 1, lead_time: 1 d"
     assert any("only loads a crew or draws spares" in warning for warning in read(text).warnings)
+
+
+def test_a_stock_without_measure_is_refused(told):
+    assert told(SPEC % "for: pump, stock: 1001, lead_time: 1 d").expected == "at most 1,000"
+
+
+def test_spares_may_stand_before_a_crew_as_units_do(read):
+    text = SPEC % "for: motor, stock: 2, lead_time: 1 d" + "crews: {fitters: {size: %d, repairs: [motor]}}\n"
+    assert not any("a size of" in warning for warning in read(text % 3).warnings)
+    assert any("a size of 4 for 3 units" in warning for warning in read(text % 4).warnings)

@@ -242,3 +242,21 @@ def test_chances_at_an_instant_add_up_to_one() -> None:
         ):
             chances[source] += space.kinds.rates.rates[space.kinds.kinds[kind].rate].exact * multiple
         assert set(chances) == {Fraction(1)}
+
+
+def test_what_only_a_phase_needs_counts_for_the_system() -> None:
+    spec = {
+        "units": {
+            "a": {"failure_rate": "1e-3 /h", "repair_time": "10 h"},
+            "b": {"failure_rate": "2e-3 /h", "repair_time": "10 h"},
+        },
+        "system": "a",
+        "phases": [
+            {"name": "one", "duration": "9 h", "system": {"all_of": ["a", "b"]}},
+            {"name": "other", "duration": "9 h", "repeat": True},
+        ],
+    }
+    repairs = sum(rate / (1 + rate * 10) for rate in (1e-3, 2e-3)) * 8760
+    assert answer(spec, "repairs_per_year") == pytest.approx(repairs, rel=1e-12)
+    failed = sum(rate * 10 / (1 + rate * 10) for rate in (1e-3, 2e-3))
+    assert answer(spec, "mean_units_failed") == pytest.approx(failed, rel=1e-12)
