@@ -98,7 +98,9 @@ def follow(
     amounts = _absorbed_at_once(course, first)
     small = reduced(course, first.possible)
     course = small.course
-    runner = Runner(course, method, largest_dense)
+    period = float(course.period) if course.cycle else 0.0
+    cycles = float(max(times, default=0)) / period if period else 0.0
+    runner = Runner(course, method, largest_dense, cycles)
     weights = small.shrunk(first).without(course.first().absorbing())
     # Where each segment of the prefix, and the cycle, begins.
     begins = [(weights, amounts)]

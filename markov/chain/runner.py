@@ -14,7 +14,7 @@ from functools import cached_property
 
 import numpy as np
 
-from markov.chain import elimination
+from markov.chain import elimination, uniformisation
 from markov.chain.bounds import Flags
 from markov.chain.carried import SLACK, Amounts, Weights, nothing
 from markov.chain.course import Course, Segment, passed
@@ -35,6 +35,9 @@ _ROUNDS = 600
 #: Entries of a cycle's matrix below this are left out where a solution is only guessed.
 _SMALL = 1e-60
 
+#: Transitions followed, beyond which no result is tried for: some ten seconds each time.
+MOST_WORK = 5e9
+
 
 class Runner:
     """A course ready to be carried out.
@@ -46,14 +49,38 @@ class Runner:
         Method for values at a time, where segments are not carried out by matrices.
     largest_dense : int
         Number of states up to which segments are prepared as matrices.
+    cycles : float
+        How many cycles will be followed where there are no matrices.
     """
 
-    def __init__(self, course: Course, method: Method | None = None, largest_dense: int = LARGEST_DENSE) -> None:
+    def __init__(
+        self,
+        course: Course,
+        method: Method | None = None,
+        largest_dense: int = LARGEST_DENSE,
+        cycles: float = 3.0,
+    ) -> None:
         self.course = course
         self.dense = method in (None, "ladder") and self._cheap(largest_dense)
         shared: dict[tuple[int, bytes, Fraction], Exponential] = {}
         self._strides = {id(each): Stride(each, self.dense, method, shared) for each in course.distinct()}
         self._powers: list[Transfer] = []
+        if not self.dense and method is None:
+            self._must_end(cycles)
+
+    def _must_end(self, cycles: float) -> None:
+        """Refuse what would take many minutes: segments are followed one by one, as many jumps as their rates tell."""
+        work = 0.0
+        for segments, times in ((self.course.prefix, 1.0), (self.course.cycle, cycles)):
+            for segment in segments:
+                chain = segment.generator
+                jumps = uniformisation.expected_jumps(chain, None, segment.hours)
+                work += times * (jumps + 200.0) * (chain.source.size + 4.0 * chain.n + 10_000.0)
+        if work > MOST_WORK:
+            raise NotReached(
+                f"{self.course.n:,} states with fixed instants and rates as unlike as here would take many minutes; "
+                "separate specs for what shares nothing but the calendar, or fewer groups in one, would help"
+            )
 
     def _cheap(self, largest: int) -> bool:
         """Whether matrices are worth their time: always for small chains, where they are few for larger ones."""

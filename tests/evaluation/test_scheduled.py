@@ -12,9 +12,11 @@ import pytest
 
 from markov.chain import Enclosure
 from markov.errors import IllPosed
+from markov.evaluation import solve_model
 from markov.evaluation.answers import Answers
 from markov.evaluation.questions import Question
 from markov.evaluation.scheduled import SCHEDULED, ScheduledAnswers
+from markov.model import Model
 from markov.rates import Rate
 from markov.spec import read_text
 from markov.states import ArrowKind, ArrowKinds, Arrows, generate
@@ -348,3 +350,25 @@ def test_what_cannot_fail_says_so() -> None:
     assert ask(answers, "unreliability", 5).upper == 0.0
     with pytest.raises(IllPosed, match="no down state"):
         ask(answers, "mean_time_to_first_failure")
+
+
+def test_what_would_take_many_minutes_is_refused_at_once_with_what_would_help() -> None:
+    pairs = {f"g{number}": {"members": [{"unit": "a", "count": 2}, "b"], "redundancy": "active"} for number in range(5)}
+    for number, group in enumerate(pairs.values()):
+        group["members"] = [{"unit": f"a{number}", "count": 2}, f"b{number}"]
+    units = {}
+    for number in range(5):
+        units[f"a{number}"] = {"failure_rate": f"{number + 1}e-5 /h", "repair_time": "1 s"}
+        units[f"b{number}"] = {"failure_rate": f"{number + 1}e-6 /h", "repair_time": "20 h", "detected": "50 %"}
+    spec = {
+        "units": units,
+        "groups": pairs,
+        "tests": {"t": {"of": "b0", "interval": "1 y"}},
+        "system": {"all_of": list(pairs)},
+    }
+    solution = solve_model(Model.from_mapping(spec))
+    found = next(each for each in solution.results if each.measure == "steady_state_unavailability")
+    assert found.value is None
+    assert not found.reached
+    assert found.reason is not None
+    assert "separate specs for what shares nothing but the calendar" in found.reason
