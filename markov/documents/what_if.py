@@ -32,6 +32,13 @@ _WORK_WITH_INSTANTS = 40_000
 #: States of the whole plant, nothing merged or taken apart, up to which all groups may be tied together.
 _COUPLED_UP_TO = 5_000
 
+#: Marks of what is no choice but stands in for a law that the spec gives.
+_STAND_INS = (" fitted to the mean", "a fixed time, approximated", "stages in place of exponential times")
+_OTHER_LAW = (
+    "Stages stand in for the time that the spec gives. Another law of the same mean and spread would move values at a "
+    "time, and those where repairs or takeovers compete, somewhat."
+)
+
 
 class WhatIf:
     """Effects of the choices that one spec leaves unsaid.
@@ -75,6 +82,8 @@ class WhatIf:
 
     def effect(self, choice: str) -> Text:
         """Tell the effect of one choice left unsaid, given as a solution lists it."""
+        if any(mark in choice for mark in _STAND_INS):
+            return plain(_OTHER_LAW)
         words, example = other_choice(self.model, choice)
         return (*plain(words), *self._numbers(example))
 

@@ -38,10 +38,15 @@ def _told(where: str, shape: TimeShape, fit: Fit) -> str:
             f"{where}: a fixed time, approximated by {stages} of equal mean; the mean is exact, "
             f"the standard deviation {100 * fit.spread:.3g} % of it and not 0"
         )
+    third = ""
+    if abs(fit.skewness_gap) > 1e-9:
+        third = (
+            f", the third moment about the mean off by {fit.skewness_gap:+.2g} of the cube of the mean from that of a "
+            "gamma law"
+        )
     return (
         f"{where}: {stages} fitted to the mean and the standard deviation; the mean is exact, the standard deviation "
-        f"{100 * fit.spread:.6g} % of it, the third moment about the mean off by {fit.skewness_gap:+.2g} of the cube "
-        "of the mean from that of a gamma law"
+        f"{100 * fit.spread:.6g} % of it{third}"
     )
 
 

@@ -97,6 +97,8 @@ def _of_a_group(name: str, group: Group, model: Model) -> Iterator[str]:
         yield f"{where}.switchover.uncovered: until_repair (an uncovered fault ends with the next repair that suffices)"
     if standby and group.takeover_time is None:
         yield f"{where}.switchover.time: 0 h (a standby takes over at once)"
+    elif group.is_active and redundant and group.takeover_time is None:
+        yield f"{where}.switchover.time: 0 h (a covered fault does not interrupt the group)"
     timed = group.takeover_time is not None and not group.takeover_time.is_zero
     shaped = group.takeover_shape is not None
     if timed and not shaped and group.switchover is not None and not group.switchover.is_said("stages"):

@@ -26,11 +26,17 @@ def hiding_cautions(content: Content) -> Iterator[str]:
 def _never_found(content: Content, place: Placement) -> Iterator[str]:
     """Name hidden faults that stay for good."""
     unit = content.units.get(place.unit)
-    if unit is None or not unit.may_hide or {"demand", "system_failure"} & set(unit.revealed_by):
+    if unit is None or not unit.may_hide or "demand" in unit.revealed_by:
         return
     tests = [content.tests[name] for name in content.tests_of(place)]
     best = max((Fraction(1) if each.coverage is None else each.coverage.exact for each in tests), default=Fraction(0))
     if best == 1:
+        return
+    if "system_failure" in unit.revealed_by:
+        yield (
+            f"hidden faults of {quote(place.key)} are revealed when the system fails, not while it is down: one that "
+            "comes then may stay for good, and the unavailability leads to 1 where it keeps the system down."
+        )
         return
     share = "" if best == 0 else f"{float(100 * (1 - best)):.12g} % of "
     yield (

@@ -24,7 +24,12 @@ def idle_cautions(content: Content) -> Iterator[str]:
 
 
 def _units(content: Content) -> Iterator[str]:
+    trains = content.trains
     for name, unit in content.units.items():
+        homes = [(key, group) for key, group in content.groups.items() if any(m.name == name for m in group.members)]
+        starts = unit.start_failure is not None and not unit.start_failure.is_zero
+        if starts and homes and all(group.is_active and key not in trains for key, group in homes):
+            yield f"units.{name}: `start_failure` has no effect in active groups, where nothing is ever started."
         if not all(mode.repaired_at_once for mode in unit.modes()):
             continue
         for key, written in (

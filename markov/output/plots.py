@@ -45,7 +45,7 @@ _JUST_BEFORE = Fraction(999_999, 1_000_000)
 """Share of the time between two instants at which the value just before the second one is taken."""
 _SOON = (Fraction(1, 128), Fraction(1, 64), Fraction(1, 32))
 """Shares of it soon after an instant, where what was found is being repaired."""
-_MOST_INSTANTS = 60
+_MOST_INSTANTS = 80
 """Instants shown of a cycle."""
 _BARS = 10
 _HIGH = {"reliability": "unreliability", "availability": "unavailability"}
@@ -88,6 +88,11 @@ class Plots:
             return self.model.mission.time.exact
         asked = [target.at_hours for target in self.solution.targets if target.at_hours]
         return max(asked, default=self.model.year_hours)
+
+    @property
+    def _is_resolved(self) -> bool:
+        """Whether there are values around every fixed instant: a line through few would lie about them."""
+        return self._table is None or bool(self._instants_up_to_horizon)
 
     @property
     def _is_too_large(self) -> bool:
@@ -216,7 +221,7 @@ class Plots:
 
     def reliability(self) -> Plot | None:
         """R(t) on plain axes."""
-        if self._is_too_large:
+        if self._is_too_large or not self._is_resolved:
             return None
         results = self._values("reliability", self._even)
         unit, words = self._unit(self.horizon)
@@ -239,15 +244,13 @@ class Plots:
 
     def unreliability(self) -> Plot | None:
         """Unreliability and unavailability on logarithmic axes, with the limits of targets."""
-        if self._is_too_large:
+        if self._is_too_large or not self._is_resolved:
             return None
         is_scheduled = self._table is not None
         times = tuple(time for time in self._even if time) if is_scheduled else self._by_decades
         unit, words = self._unit(self.horizon)
         failed = self._values("unreliability", times)
-        # A line through few values would lie about what happens between instants that are many.
-        is_resolved = not is_scheduled or bool(self._instants_up_to_horizon)
-        down = self._values("unavailability", times) if is_resolved else []
+        down = self._values("unavailability", times)
         both = (self._curve("unreliability", failed, unit), self._curve("unavailability", down, unit))
         curves = tuple(each for each in both if sum(y > 0 for _, y in each.points) > 1)
         if not curves:

@@ -167,3 +167,23 @@ def test_units_with_different_modes_are_not_nearly_alike(read):
     other = text.replace("detected: 40 %}\n  lamp", "detected: 40 %, failure_modes: {a: {share: 1}}}\n  lamp")
     assert other != text
     assert not any("1 %" in warning for warning in read(other).warnings)
+
+
+def test_starts_that_never_happen_are_noted(read):
+    text = """
+units: {u: {failure_rate: 1 /y, start_failure: 2 %}}
+groups: {g: {members: [{unit: u, count: 2}], redundancy: active}}
+system: g
+"""
+    assert any("`start_failure` has no effect in active groups" in warning for warning in read(text).warnings)
+    standby = text.replace("active", "cold_standby")
+    assert not any("`start_failure` has no effect" in warning for warning in read(standby).warnings)
+
+
+def test_hidden_faults_that_come_while_the_system_is_down_are_noted(read):
+    text = """
+units:
+  line: {failure_rate: 1 /y, repair_time: 5 h, detected: 85 %, revealed_by: [system_failure]}
+system: line
+"""
+    assert any("revealed when the system fails, not while it is down" in warning for warning in read(text).warnings)
