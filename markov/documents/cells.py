@@ -6,7 +6,7 @@ from collections.abc import Iterable, Sequence
 from fractions import Fraction
 
 from markov.documents.tree import Row, Span, Text, plain
-from markov.output.wording import hours_words, measure_words, timing_words, unit_words, value_words
+from markov.output.wording import hours_words, subject_words, timing_words, unit_words, value_words
 from markov.quantities import Quantity
 from markov.results import Result, TargetResult
 
@@ -86,11 +86,7 @@ def quantity_words(quantity: Quantity) -> str:
 
 def result_words(result: Result) -> str:
     """Return what a result answers: ``unreliability of pumps, at 8 760 h``."""
-    words = measure_words(result.measure)
-    if result.of is not None:
-        words += f" of {result.of}"
-    if result.state is not None:
-        words += f" of [{result.state}]"
+    words = subject_words(result)
     timing = timing_words(result)
     return f"{words}, {timing}" if timing else words
 

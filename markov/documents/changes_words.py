@@ -22,7 +22,7 @@ from markov.documents.revision import (
     VerdictChange,
 )
 from markov.measures import MEASURES
-from markov.output.wording import measure_words, timing_words, unit_words, value_words
+from markov.output.wording import subject_words, timing_words, unit_words, value_words
 from markov.results import Result, TargetResult
 
 _WIDTH = 110
@@ -194,11 +194,7 @@ def _result_weight(change: ResultChange) -> tuple[int, int]:
 
 
 def _measure(result: Result) -> str:
-    words = measure_words(result.measure)
-    if result.of is not None:
-        words += f" of {result.of}"
-    if result.state is not None:
-        words += f" of [{result.state}]"
+    words = subject_words(result)
     timing = timing_words(result)
     return f"{words} {timing}" if timing and timing != "long run" else words
 

@@ -28,6 +28,7 @@ from markov.chain import (
     transient,
 )
 from markov.errors import IllPosed
+from markov.evaluation.derived import Derived
 from markov.evaluation.questions import Question
 from markov.rates import split_exact
 from markov.states import Arrows, GeneratedSpace, StateSpace
@@ -50,7 +51,7 @@ class _Class:
     distribution: Vector
 
 
-class Answers:
+class Answers(Derived):
     """Answers questions about one chain and keeps what several questions share.
 
     Parameters
@@ -189,10 +190,6 @@ class Answers:
         up = self.up(of)
         return flow(self.generator, up, ~up)
 
-    def per_year(self, value: Enclosure) -> Enclosure:
-        """Return a number per hour, or a share of time, as a number or hours per year."""
-        return value.times(self.year_hours)
-
     # --- at given times --------------------------------------------------------------------------------------------
 
     @cached_property
@@ -279,68 +276,17 @@ class Answers:
     def _unavailability(self, question: Question) -> Enclosure:
         return self.share_of_states(~self.up(question.of), question.at_hours)
 
-    def _mean_unavailability(self, question: Question) -> Enclosure:
-        at = question.positive_time
-        return self._integral(at, question.of, 0).over(at).capped()
-
-    def _mean_availability(self, question: Question) -> Enclosure:
-        at = question.positive_time
-        up = self._integral(at, question.of, 2).over(at).capped()
-        return up.meet(self._mean_unavailability(question).complement()) if up.lower is not None else up
-
-    def _mean_time_to_first_failure(self, question: Question) -> Enclosure:
-        mean = self._first_passage(question.of).mean
-        if mean is None:
-            raise IllPosed("a failure may never come, so there is no mean time to it")
-        return mean
-
-    def _spread_of_time_to_first_failure(self, question: Question) -> Enclosure:
-        spread = self._first_passage(question.of).standard_deviation
-        if spread is None:
-            raise IllPosed("a failure may never come, so there is no spread of the time to it")
-        return spread
-
-    def _first_passage(self, of: str | None) -> FirstPassage:
+    def _first_failure(self, of: str | None) -> FirstPassage:
         if not self.can_fail(of):
             raise IllPosed("no down state can be reached")
         if of not in self._passages_found:
             self._passages_found[of] = first_passage(self.generator, self.start, ~self.up(of))
         return self._passages_found[of]
 
-    def _mean_up_time(self, question: Question) -> Enclosure:
-        return self._availability(question) / self._passages(question)
-
-    def _mean_down_time(self, question: Question) -> Enclosure:
-        return self._unavailability(question) / self._passages(question)
-
-    def _passages(self, question: Question) -> Enclosure:
-        """Return the failure frequency as a divisor."""
-        if not self.can_fail(question.of):
-            raise IllPosed("no down state can be reached")
-        frequency = self._failure_frequency(question)
-        if frequency.upper == 0:
-            raise IllPosed("in the long run there are no failures to count: in the end it stays up, or down, for good")
-        return frequency
-
     def _failure_frequency(self, question: Question) -> Enclosure:
         if question.at_hours is None:
             return self._frequency(question.of)
         return self._states_at(question.at_hours).weighted(self._failure_flow(question.of))
-
-    def _expected_failures(self, question: Question) -> Enclosure:
-        return self._integral(question.time, question.of, 1)
-
-    def _failures_per_year(self, question: Question) -> Enclosure:
-        return self.per_year(self._frequency(question.of))
-
-    def _downtime_per_year(self, question: Question) -> Enclosure:
-        return self.per_year(self.long_run_share(~self.up(question.of)))
-
-    def _conditional_failure_intensity(self, question: Question) -> Enclosure:
-        up = self._availability(question)
-        if up.upper == 0:
-            raise IllPosed("the system is down for good" if question.of is None else f"{question.of} is down for good")
-        return self._failure_frequency(question) / up
 
     def _hazard_rate(self, question: Question) -> Enclosure:
         alive = self._alive_at(question.time, question.of)
@@ -374,10 +320,6 @@ class Answers:
         acts = self.acts(question.of)
         passages = flow(self.generator, ~acts, acts)
         return self.per_year(self.long_run(lambda pi: pi.weighted(passages)))
-
-    def _mean_failure_rate(self, question: Question) -> Enclosure:
-        at = question.positive_time
-        return self._failed_by(at, question.of).over(at)
 
     def _state_probability(self, question: Question) -> Enclosure:
         if question.state is None:

@@ -21,6 +21,7 @@ from markov.chain.course import Course
 from markov.chain.periodic import FirstFailure, Moment, first_failure, follow, periodic_limit
 from markov.chain.strides import LARGEST_DENSE
 from markov.errors import IllPosed
+from markov.evaluation.derived import Derived
 from markov.evaluation.laying import UNIT, Earnings, Mask, Schedule, ScheduledSpace, Stretch, Values, start_of
 from markov.evaluation.limits import Average, Limit, Weighable
 from markov.evaluation.questions import Question
@@ -30,7 +31,7 @@ from markov.states import Arrows
 _CLOSE = 1e-12
 
 
-class ScheduledAnswers:
+class ScheduledAnswers(Derived):
     """Answers questions about one chain with fixed instants and keeps what several questions share.
 
     Parameters
@@ -238,10 +239,6 @@ class ScheduledAnswers:
             )
         )
 
-    def per_year(self, value: Enclosure) -> Enclosure:
-        """Return a number per hour, or a share of time, as a number or hours per year."""
-        return value.times(self.year_hours)
-
     # --- at given times ----------------------------------------------------------------------------------------------
 
     def expect(self, question: Question) -> None:
@@ -351,15 +348,6 @@ class ScheduledAnswers:
     def _unavailability(self, question: Question) -> Enclosure:
         return self.share_of_states(self._down(question.of), question.at_hours)
 
-    def _mean_unavailability(self, question: Question) -> Enclosure:
-        at = question.positive_time
-        return self._integral(at, question.of, 0).over(at).capped()
-
-    def _mean_availability(self, question: Question) -> Enclosure:
-        at = question.positive_time
-        up = self._integral(at, question.of, 2).over(at).capped()
-        return up.meet(self._mean_unavailability(question).complement()) if up.lower is not None else up
-
     def _first_failure(self, of: str | None) -> FirstFailure:
         if not self.can_fail(of):
             raise IllPosed("no down state can be reached")
@@ -371,53 +359,11 @@ class ScheduledAnswers:
             )
         return self._first_failures[of]
 
-    def _mean_time_to_first_failure(self, question: Question) -> Enclosure:
-        mean = self._first_failure(question.of).mean
-        if mean is None:
-            raise IllPosed("a failure may never come, so there is no mean time to it")
-        return mean
-
-    def _spread_of_time_to_first_failure(self, question: Question) -> Enclosure:
-        spread = self._first_failure(question.of).standard_deviation
-        if spread is None:
-            raise IllPosed("a failure may never come, so there is no spread of the time to it")
-        return spread
-
-    def _mean_up_time(self, question: Question) -> Enclosure:
-        return self._availability(question) / self._passages(question)
-
-    def _mean_down_time(self, question: Question) -> Enclosure:
-        return self._unavailability(question) / self._passages(question)
-
-    def _passages(self, question: Question) -> Enclosure:
-        """Return the failure frequency as a divisor."""
-        if not self.can_fail(question.of):
-            raise IllPosed("no down state can be reached")
-        frequency = self._failure_frequency(question)
-        if frequency.upper == 0:
-            raise IllPosed("in the long run there are no failures to count: in the end it stays up, or down, for good")
-        return frequency
-
     def _failure_frequency(self, question: Question) -> Enclosure:
         if question.at_hours is None:
             return self.long_run_rate(self._failures(question.of))
         moment, phase = self._moment(question.at_hours)
         return moment.states.weighted(self._failure_flow(question.of, phase))
-
-    def _expected_failures(self, question: Question) -> Enclosure:
-        return self._integral(question.time, question.of, 1)
-
-    def _failures_per_year(self, question: Question) -> Enclosure:
-        return self.per_year(self.long_run_rate(self._failures(question.of)))
-
-    def _downtime_per_year(self, question: Question) -> Enclosure:
-        return self.per_year(self.long_run_share(self._down(question.of)))
-
-    def _conditional_failure_intensity(self, question: Question) -> Enclosure:
-        up = self._availability(question)
-        if up.upper == 0:
-            raise IllPosed("the system is down for good" if question.of is None else f"{question.of} is down for good")
-        return self._failure_frequency(question) / up
 
     def _hazard_rate(self, question: Question) -> Enclosure:
         moment = self._stopped_at_failure(question.time, question.of)
@@ -428,10 +374,6 @@ class ScheduledAnswers:
         if survivors.lower == 0 and survivors.upper is not None:
             raise IllPosed(f"the chance to survive to this time is below {survivors.upper:.0e}, too small to divide by")
         return moment.states.weighted(self._failure_flow(question.of, phase)) / survivors
-
-    def _mean_failure_rate(self, question: Question) -> Enclosure:
-        at = question.positive_time
-        return self._stopped_at_failure(at, question.of).absorbed.over(at)
 
     def _dangerous(self, of: str | None) -> Callable[[int], Values]:
         return lambda phase: self._dangerous_flags(of, phase).astype(np.float64)

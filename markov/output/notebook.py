@@ -9,8 +9,8 @@ from markov.output.redundancy import HEADING, redundancy_grids
 from markov.output.wording import (
     CAUTIONS,
     bound_words,
-    measure_words,
     size_words,
+    subject_words,
     timing_words,
     unit_words,
     value_words,
@@ -59,11 +59,7 @@ def solution_html(solution: Solution) -> str:
 
 
 def _words(result: Result) -> str:
-    words = measure_words(result.measure)
-    if result.of is not None:
-        words += f" of {result.of}"
-    if result.state is not None:
-        words += f" of [{result.state}]"
+    words = subject_words(result)
     timing = timing_words(result)
     return f"{words}, {timing}" if timing else words
 

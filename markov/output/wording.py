@@ -114,6 +114,14 @@ def _rounded_up(value: float) -> str:
     return f"{digit}e{exponent}" if digit < 10 else f"1e{int(exponent) + 1:+03d}"
 
 
+def subject_words(result: Result) -> str:
+    """Return the measure of a result and whom it is of: ``unreliability of pumps``."""
+    words = measure_words(result.measure)
+    if result.of is not None:
+        words += f" of {result.of}"
+    return words if result.state is None else f"{words} of [{result.state}]"
+
+
 def timing_words(result: Result) -> str:
     """Return the time a result belongs to: hours, the long run, or nothing."""
     if result.at_hours is not None:

@@ -64,17 +64,15 @@ def clock_events(
 
 def _pass(dice: Dice, row: int, onward: int | None, early: Factor | None, apply: Apply, branch: Branch) -> list[Branch]:
     branch.x[row] -= 1
-    if onward is None:
-        return apply(branch)
-    if early is None:
-        branch.x[onward] += 1
-        return [branch]
-    ended, lasting = dice.draw(branch, early, "no further stage", "")
-    result: list[Branch] = []
-    if ended is not None:
-        result += apply(ended)
+    return apply(branch) if onward is None else _further(dice, onward, early, apply, branch)
+
+
+def _further(dice: Dice, row: int, early: Factor | None, apply: Apply, branch: Branch) -> list[Branch]:
+    """Let a time that has stages left pass to the next, counted in `row`, unless it ends early."""
+    ended, lasting = (None, branch) if early is None else dice.draw(branch, early, "no further stage", "")
+    result = [] if ended is None else apply(ended)
     if lasting is not None:
-        lasting.x[onward] += 1
+        lasting.x[row] += 1
         result.append(lasting)
     return result
 
@@ -89,26 +87,10 @@ def staged_flag_events(dice: Dice, clock: Clock, row: int, *, cause: str, apply:
             "always",
             dice.table.of(clock.rates[stage]),
             partial(_at_stage, row, stage),
-            partial(_flag_passes, dice, row, final, clock.exits[stage], apply),
+            apply if final else partial(_further, dice, row, clock.exits[stage], apply),
         )
 
 
 def _at_stage(row: int, stage: int, x: Digits) -> NDArray[np.int32]:
     here: NDArray[np.int32] = (x[row] == stage + 1).astype(np.int32)
     return here
-
-
-def _flag_passes(dice: Dice, row: int, final: bool, early: Factor | None, apply: Apply, branch: Branch) -> list[Branch]:
-    if final:
-        return apply(branch)
-    if early is None:
-        branch.x[row] += 1
-        return [branch]
-    ended, lasting = dice.draw(branch, early, "no further stage", "")
-    result: list[Branch] = []
-    if ended is not None:
-        result += apply(ended)
-    if lasting is not None:
-        lasting.x[row] += 1
-        result.append(lasting)
-    return result
